@@ -1,0 +1,41 @@
+"""unmix: what is in a mixture, how much of each, and how sure, from its optical spectra.
+
+The door: every public name is loaded from its module on first use, so that ``import unmix`` stays light.
+"""
+
+from importlib import import_module
+from importlib.metadata import PackageNotFoundError, version
+from typing import TYPE_CHECKING, Any
+
+if TYPE_CHECKING:
+    from unmix.diagnose.conditioning import conditioning
+    from unmix.read import read, write
+    from unmix.report.page import report
+    from unmix.solve.known import quantify
+
+#: public name -> the module that holds it
+_HOMES = {
+    "read": "unmix.read",
+    "write": "unmix.read",
+    "quantify": "unmix.solve.known",
+    "conditioning": "unmix.diagnose.conditioning",
+    "report": "unmix.report.page",
+}
+
+try:
+    __version__ = version("unmix")
+except PackageNotFoundError:  # a source tree that was never installed
+    __version__ = "0+unknown"
+
+__all__ = ["conditioning", "quantify", "read", "report", "write"]
+
+
+def __getattr__(name: str) -> Any:
+    home = _HOMES.get(name)
+    if home is None:
+        raise AttributeError(f"module 'unmix' has no attribute '{name}'; it has {', '.join(__all__)}")
+    return getattr(import_module(home), name)
+
+
+def __dir__() -> list[str]:
+    return [*__all__, "__version__"]

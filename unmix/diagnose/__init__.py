@@ -1,0 +1,1 @@
+"""Can the answer be trusted? Functions on arrays and results that know no solver."""

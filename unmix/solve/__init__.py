@@ -1,0 +1,5 @@
+"""One module a question: the estimator first, below it the public function."""
+
+
+
+

@@ -1,0 +1,1 @@
+"""Amounts from known pure spectra."""
