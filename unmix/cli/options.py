@@ -1,0 +1,139 @@
+"""Options that several commands share, declared once, and how their texts become values.
+
+What an option means is the business of the function that it is handed to; here it is only read.
+"""
+
+import re
+from pathlib import Path
+from typing import Annotated
+
+import typer
+
+from unmix.errors import InputError
+
+Sources = Annotated[
+    list[str],
+    typer.Argument(metavar="SAMPLES...", help="Spectrum files, folders or patterns such as 'runs/*.jdx'."),
+]
+Pure = Annotated[
+    list[str],
+    typer.Option("--pure", metavar="PATH", help="Pure spectra: folder, file or pattern; may be repeated."),
+]
+Csv = Annotated[
+    Path | None,
+    typer.Option("--csv", metavar="FILE", help="Write the table as CSV ('-' prints it instead)."),
+]
+Xlsx = Annotated[
+    Path | None,
+    typer.Option("--xlsx", metavar="FILE", help="Write the table as a spreadsheet."),
+]
+Json = Annotated[
+    Path | None,
+    typer.Option(
+        "--json", metavar="FILE", help="Write table and provenance as JSON ('-' prints it instead)."
+    ),
+]
+NetCdf = Annotated[
+    Path | None,
+    typer.Option("--netcdf", metavar="FILE", help="Write the whole result, curves included, as netCDF."),
+]
+Report = Annotated[
+    Path | None,
+    typer.Option("--report", metavar="FILE", help="Write a page to look at (HTML, works offline)."),
+]
+Overwrite = Annotated[bool, typer.Option("--overwrite", help="Replace files that exist already.")]
+Quiet = Annotated[bool, typer.Option("--quiet", "-q", help="Print nothing but errors.")]
+Debug = Annotated[bool, typer.Option("--debug", help="Show the full Python error when something fails.")]
+Regions = Annotated[
+    str | None,
+    typer.Option(
+        "--regions",
+        metavar="LOW-HIGH,...",
+        help="Use only these parts of the axis, for example 900-1300,1650-1800.",
+    ),
+]
+Baseline = Annotated[
+    str,
+    typer.Option(
+        "--baseline",
+        metavar="ORDER",
+        help="Baseline in the fit: 0 an offset, 1 a line, 2 a curve, ... or none.",
+    ),
+]
+Noise = Annotated[
+    float | None,
+    typer.Option(
+        "--noise", metavar="ABSORBANCE", help="Noise of a channel (standard deviation), when it is known."
+    ),
+]
+Level = Annotated[float, typer.Option("--level", metavar="FRACTION", help="Confidence of the intervals.")]
+Per = Annotated[
+    str | None,
+    typer.Option(
+        "--per",
+        metavar="UNIT",
+        help="Unit amount of the pure spectra, such as g/L, where the files do not say it.",
+    ),
+]
+Quantity = Annotated[
+    str | None,
+    typer.Option(
+        "--quantity", metavar="WORD", help="absorbance, transmittance, ... where the files do not say it."
+    ),
+]
+Unit = Annotated[
+    str | None,
+    typer.Option(
+        "--unit", metavar="UNIT", help="Axis unit, such as cm-1 or nm, where the files do not say it."
+    ),
+]
+
+_REGION = re.compile(
+    r"\s*([-+]?[\d.]+(?:e[-+]?\d+)?)\s*(?:-|:|\.\.|to)\s*([-+]?[\d.]+(?:e[-+]?\d+)?)\s*", re.I
+)
+
+
+def regions_from(text: str | None) -> list[tuple[float, float]] | None:
+    """Read ``900-1300,1650-1800``; either end may come first, as infrared regions are written both ways.
+
+    Raises
+    ------
+    InputError
+        When a part is not two numbers.
+
+    Examples
+    --------
+    >>> regions_from("1800-1650, 900-1300")
+    [(1650.0, 1800.0), (900.0, 1300.0)]
+    """
+    if text is None:
+        return None
+    found = []
+    for part in text.split(","):
+        match = _REGION.fullmatch(part)
+        try:
+            low, high = sorted(float(number) for number in match.groups()) if match else (0.0, 0.0)
+        except ValueError:
+            match = None
+        if not match:
+            raise InputError(
+                f"--regions: '{part}' is not a region",
+                accepted="give low-high with commas between them, for example 900-1300,1650-1800",
+            )
+        found.append((low, high))
+    return found
+
+
+def baseline_from(text: str) -> int | None:
+    """Read the order of the baseline; ``none`` is None.
+
+    Raises
+    ------
+    InputError
+        When the text is neither ``none`` nor a whole number from zero.
+    """
+    if text.strip().lower() == "none":
+        return None
+    if not text.strip().isdecimal():
+        raise InputError(f"--baseline is '{text}'", accepted="give 0, 1, 2, ... or none")
+    return int(text)
