@@ -1,0 +1,305 @@
+"""Is something missing from the list of components? The score test for one more band, and the harm it does.
+
+For a band template g, z(g) = g'r / (sigma ||g - Hg||) with r the whitened residual and H the projector on the
+whitened design: the score test of Rao (Proc. Camb. Philos. Soc. 44 (1948) 50) for one more column, here for
+every position and several widths at once. The limit is the quantile of the largest |z| over all of them,
+simulated.
+"""
+
+from functools import lru_cache
+from typing import NamedTuple
+
+import numpy as np
+from scipy import fft
+
+from unmix.kernels import BoolArray, FloatArray, IntArray
+from unmix.kernels.linalg import polynomial_terms
+
+#: chance of at least one band flagged in a spectrum whose model is right
+FALSE_ALARM = 0.01
+
+#: degrees of freedom below which a missing band cannot be told from noise
+FEWEST_FREEDOM = 8
+
+#: a template is left out where less than this share of its energy is outside the design
+_HIDDEN = 0.05
+
+#: bands taken out one after the other in one spectrum
+MAX_BANDS = 8
+
+
+class Templates(NamedTuple):
+    """Gaussian bands of unit length in the frequency domain.
+
+    Attributes
+    ----------
+    widths : ndarray, shape (widths,)
+        Full widths at half height, in channels.
+    transform : ndarray, shape (widths, bins), complex
+        Conjugate transform of each centred template.
+    shapes : list of ndarray
+        The templates themselves, of odd length.
+    n_channels, n_fft : int
+    """
+
+    widths: FloatArray
+    transform: FloatArray
+    shapes: list[FloatArray]
+    n_channels: int
+    n_fft: int
+
+
+class Bands(NamedTuple):
+    """Bands that the model does not explain in one spectrum, the strongest first.
+
+    Attributes
+    ----------
+    channel, width, height, score : ndarray, shape (bands,)
+        Position (channel index), full width at half height (channels), height (units of the data) and z.
+    shift : ndarray, shape (bands, terms)
+        What each band adds to each fitted term as long as it is not in the model.
+    """
+
+    channel: IntArray
+    width: FloatArray
+    height: FloatArray
+    score: FloatArray
+    shift: FloatArray
+
+
+@lru_cache(maxsize=32)
+def templates(n_channels: int) -> Templates:
+    """Band templates for spectra of a number of channels, at widths a factor of two apart.
+
+    The narrowest is 3 channels wide, the widest an eighth of the range (and at most 128 channels).
+    """
+    widest = min(max(n_channels / 8.0, 3.0), 128.0)
+    widths = 3.0 * 2.0 ** np.arange(int(np.log2(widest / 3.0)) + 1)
+    reach = [int(np.ceil(1.3 * w)) for w in widths]
+    n_fft = fft.next_fast_len(n_channels + 2 * max(reach), real=True)
+    shapes = []
+    rows = np.zeros((widths.size, n_fft))
+    for i, (w, h) in enumerate(zip(widths, reach, strict=True)):
+        shape = np.exp(-4.0 * np.log(2.0) * (np.arange(-h, h + 1) / w) ** 2)
+        shapes.append(shape / np.linalg.norm(shape))
+        rows[i, : h + 1], rows[i, n_fft - h :] = shapes[-1][h:], shapes[-1][:h]
+    return Templates(widths, np.conj(fft.rfft(rows, axis=1)), shapes, n_channels, n_fft)
+
+
+def correlate(x: FloatArray, t: Templates) -> FloatArray:
+    """Inner product of every row with every template at every position.
+
+    Parameters
+    ----------
+    x : ndarray, shape (..., channels)
+
+    Returns
+    -------
+    ndarray, shape (..., widths, channels)
+    """
+    spectrum = fft.rfft(x, n=t.n_fft, axis=-1)
+    product = fft.irfft(spectrum[..., None, :] * t.transform, n=t.n_fft, axis=-1)
+    inside: FloatArray = product[..., : t.n_channels]
+    return inside
+
+
+def template_energy(used: BoolArray, t: Templates, lags: int) -> FloatArray:
+    """Energy of each template at each position over the used channels, by lag of the inverse covariance.
+
+    Returns
+    -------
+    ndarray, shape (lags, widths, channels)
+        Entry d is the sum of g(s) g(s + d) over pairs of used channels of an unbroken run; off the main diagonal
+        it counts twice.
+    """
+    mask = used.astype(float)
+    spectrum_cache = []
+    for d in range(lags):
+        run = mask[: mask.size - d].copy()
+        for e in range(1, d + 1):
+            run *= mask[e : mask.size - d + e]
+        spectrum = fft.rfft(run, n=t.n_fft)
+        rows = np.empty((t.widths.size, t.n_channels))
+        for i, shape in enumerate(t.shapes):
+            h = shape.size // 2
+            product = np.zeros(t.n_fft)
+            pair = shape[: shape.size - d] * shape[d:] if d < shape.size else np.zeros(1)
+            at = (np.arange(pair.size) - h) % t.n_fft
+            product[at] = pair
+            rows[i] = fft.irfft(spectrum * np.conj(fft.rfft(product)), n=t.n_fft)[: t.n_channels]
+        spectrum_cache.append(rows * (1.0 if d == 0 else 2.0))
+    return np.stack(spectrum_cache)
+
+
+def denominators(energy: FloatArray, projected: FloatArray) -> FloatArray:
+    """||g - Hg|| at every width and position; NaN where the band hides in the design or outside the channels.
+
+    Parameters
+    ----------
+    energy : ndarray, shape (..., widths, channels)
+        ||g||^2 of the whitened templates.
+    projected : ndarray, shape (..., widths, channels)
+        ||Q'g||^2.
+    """
+    left = energy - projected
+    full = np.median(energy, axis=-1, keepdims=True)
+    outside = left <= _HIDDEN * np.maximum(energy, full)
+    return np.where(outside, np.nan, np.sqrt(np.where(outside, 1.0, left)))
+
+
+def largest(score: FloatArray) -> tuple[FloatArray, IntArray, IntArray]:
+    """The signed score that is largest in size for each spectrum, with its width and channel index.
+
+    Parameters
+    ----------
+    score : ndarray, shape (spectra, widths, channels)
+        NaN is passed over; a spectrum without any score gets 0.
+    """
+    flat = np.nan_to_num(score).reshape(score.shape[0], -1)
+    best = np.abs(flat).argmax(axis=1)
+    width, channel = np.divmod(best, score.shape[2])
+    return flat[np.arange(flat.shape[0]), best], width, channel
+
+
+@lru_cache(maxsize=128)
+def null_limit(n_channels: int, n_terms: int, false_alarm: float = FALSE_ALARM, seed: int = 20260101) -> float:
+    """Limit of the largest |z| for a right model, simulated once for a number of channels and fitted terms.
+
+    White noise is projected off as many polynomial terms as the model has; the form of the design hardly matters.
+    The quantile comes from a Gumbel distribution with the simulated mean and variance (extreme values: Gumbel,
+    Statistics of Extremes (1958)).
+
+    Returns
+    -------
+    float
+    """
+    rng = np.random.default_rng(seed)
+    t = templates(n_channels)
+    q = np.linalg.qr(polynomial_terms(np.linspace(-1.0, 1.0, n_channels), n_terms - 1))[0] if n_terms else None
+    used = np.ones(n_channels, dtype=bool)
+    energy = template_energy(used, t, 1)[0]
+    projected = np.zeros_like(energy) if q is None else np.sum(correlate(q.T, t) ** 2, axis=0)
+    below = denominators(energy, projected)
+    found = []
+    block = max(1, min(200, 2_000_000 // (below.size + 1)))
+    for _ in range(-(-600 // block)):
+        r = rng.standard_normal((block, n_channels))
+        if q is not None:
+            r -= (r @ q) @ q.T
+        sigma = np.sqrt(np.sum(r**2, axis=1) / (n_channels - n_terms))
+        z = correlate(r, t) / below / sigma[:, None, None]
+        found.append(np.abs(largest(z)[0]))
+    top = np.concatenate(found)
+    beta = top.std(ddof=1) * np.sqrt(6.0) / np.pi
+    return float(top.mean() - np.euler_gamma * beta - beta * np.log(-np.log1p(-false_alarm)))
+
+
+class FilterPair:
+    """Whitening filters of some spectra on rows of channels, and their transposes.
+
+    Parameters
+    ----------
+    coefficients : ndarray, shape (spectra, order + 1)
+        Of the prediction error filters, 1 first.
+    used : ndarray, shape (channels,), bool
+        Unused channels come out as zero.
+    """
+
+    def __init__(self, coefficients: FloatArray, used: BoolArray) -> None:
+        self.coefficients = coefficients[:, None, :]
+        self.used = used
+
+    def forward(self, x: FloatArray) -> FloatArray:
+        """Filter rows, shape (spectra or 1, rows, channels)."""
+        out = x * self.coefficients[..., :1]
+        for j in range(1, self.coefficients.shape[-1]):
+            out[..., j:] += self.coefficients[..., j : j + 1] * x[..., :-j]
+        return np.where(self.used, out, 0.0)
+
+    def transpose(self, x: FloatArray) -> FloatArray:
+        """The filter run backwards over rows, shape (spectra or 1, rows, channels)."""
+        out = x * self.coefficients[..., :1]
+        for j in range(1, self.coefficients.shape[-1]):
+            out[..., :-j] += self.coefficients[..., j : j + 1] * x[..., j:]
+        return np.where(self.used, out, 0.0)
+
+
+class Whitened(NamedTuple):
+    """One spectrum's fit in whitened form, as the search for bands needs it.
+
+    Attributes
+    ----------
+    residual : ndarray, shape (channels,)
+        Whitened residual, zero on unused channels.
+    basis : ndarray, shape (terms, channels)
+        Orthonormal basis of the whitened design, as rows.
+    factor : ndarray, shape (terms, terms)
+        Fitted terms = factor @ (basis @ whitened data).
+    filters : FilterPair
+        Of this spectrum alone.
+    energy : ndarray, shape (widths, channels)
+        ||Wg||^2 of the templates.
+    freedom : float
+        Degrees of freedom of the residual.
+    """
+
+    residual: FloatArray
+    basis: FloatArray
+    factor: FloatArray
+    filters: FilterPair
+    energy: FloatArray
+    freedom: float
+
+
+def unexplained_bands(fit: Whitened, t: Templates, limit: float) -> Bands:
+    """Take out unexplained bands one by one, at most ``MAX_BANDS``, until none is above the limit.
+
+    Parameters
+    ----------
+    fit : Whitened
+    t : Templates
+    limit : float
+        Of |z|.
+    """
+    residual, freedom = fit.residual.copy(), fit.freedom
+    extra = np.empty((0, residual.size))
+    projected = np.sum(correlate(fit.filters.transpose(fit.basis[None])[0], t) ** 2, axis=0)
+    found: list[tuple[int, float, float, float, FloatArray]] = []
+    while len(found) < MAX_BANDS and freedom > FEWEST_FREEDOM:
+        sigma = np.sqrt(np.sum(residual**2) / freedom)
+        if sigma == 0:
+            break
+        along_templates = correlate(fit.filters.transpose(residual[None, None])[0, 0], t)
+        score, width, channel = largest((along_templates / denominators(fit.energy, projected) / sigma)[None])
+        if abs(score[0]) <= limit:
+            break
+        w, c = int(width[0]), int(channel[0])
+        whitened = fit.filters.forward(placed(t, w, c)[None, None])[0, 0]
+        along = fit.basis @ whitened
+        rest = whitened - along @ fit.basis
+        rest -= (extra @ rest) @ extra
+        length = float(np.linalg.norm(rest))
+        if length < 1e-6 * np.linalg.norm(whitened):
+            break
+        unit = rest / length
+        amount = float(unit @ residual) / length
+        found.append((c, float(t.widths[w]), amount * float(t.shapes[w].max()), float(score[0]),
+                      amount * (fit.factor @ along)))  # fmt: skip
+        residual = residual - (unit @ residual) * unit
+        extra = np.vstack([extra, unit])
+        projected = projected + correlate(fit.filters.transpose(unit[None, None])[0, 0], t) ** 2
+        freedom -= 1
+    channel_, width_, height_, score_, shift_ = zip(*found, strict=True) if found else ((), (), (), (), ())
+    shift = np.array(shift_, dtype=float).reshape(len(found), fit.factor.shape[0])
+    return Bands(np.array(channel_, dtype=int), np.array(width_, dtype=float), np.array(height_, dtype=float),
+                 np.array(score_, dtype=float), shift)  # fmt: skip
+
+
+def placed(t: Templates, width: int, channel: int) -> FloatArray:
+    """A template on the full axis, cut at the ends."""
+    full = np.zeros(t.n_channels)
+    shape = t.shapes[width]
+    h = shape.size // 2
+    low, high = max(channel - h, 0), min(channel + h + 1, t.n_channels)
+    full[low:high] = shape[low - channel + h : high - channel + h]
+    return full

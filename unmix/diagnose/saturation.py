@@ -1,0 +1,68 @@
+"""Saturated channels: bands whose tops are flat because the detector sees no more light."""
+
+import numpy as np
+
+from unmix.kernels import BoolArray, FloatArray
+
+#: absorbance below which a flat top is taken for the shape of the spectrum
+_DARK = 1.0
+
+#: at or above this share of its run above 70% of the maximum, the part above 95% is a plateau (Gaussian 0.38,
+#: Lorentzian 0.35)
+_PLATEAU = 0.7
+
+#: fewest channels of a plateau
+_FEWEST = 4
+
+#: with stray light s the highest absorbance is -log10 s; this far below it, s is 3% of the light
+_MARGIN = 1.5
+
+
+def saturated(absorbance: FloatArray) -> tuple[BoolArray, FloatArray]:
+    """Channels of each spectrum that stray light or the end of the detector's range has bent.
+
+    A spectrum is saturated when the run of channels above 70% of its maximum holds mostly channels above 95% of
+    it, which no line shape does. Then everything within 1.5 absorbance units of the plateau is left out: with
+    stray light as the cause, a share s of the light, the plateau lies at -log10 s, and 1.5 units below it the
+    measured absorbance is still wrong by 3% of the light (common practice, no source, for the margin).
+
+    Parameters
+    ----------
+    absorbance : ndarray, shape (spectra, channels)
+        NaN is passed over.
+
+    Returns
+    -------
+    channels : ndarray of bool, shape (spectra, channels)
+    plateau : ndarray, shape (spectra,)
+        Absorbance of the plateau; NaN where there is none.
+    """
+    filled = np.where(np.isfinite(absorbance), absorbance, -np.inf)
+    top = filled.max(axis=1)
+    bent = np.zeros(absorbance.shape, dtype=bool)
+    plateau = np.full(absorbance.shape[0], np.nan)
+    for i in np.flatnonzero(np.isfinite(top) & (top >= _DARK)):
+        level = _plateau(filled[i], float(top[i]))
+        if level is not None:
+            plateau[i] = level
+            bent[i] = filled[i] >= level - _MARGIN
+    return bent, plateau
+
+
+def _plateau(spectrum: FloatArray, top: float) -> float | None:
+    """Level of the flat top that holds the maximum, or None."""
+    peak = int(spectrum.argmax())
+    high = spectrum >= 0.7 * top
+    left, right = peak, peak + 1
+    while left > 0 and high[left - 1]:
+        left -= 1
+    while right < spectrum.size and high[right]:
+        right += 1
+    run = spectrum[left:right]
+    # noise grows on the plateau, so its level is the median of the upper part and not the maximum
+    level = float(np.median(run[run >= 0.9 * top]))
+    flat = np.count_nonzero(run >= 0.95 * level)
+    clear_ends = left > 0 and right < spectrum.size
+    if flat < _FEWEST or flat < _PLATEAU * run.size or not (clear_ends or flat >= 3 * _FEWEST):
+        return None
+    return level

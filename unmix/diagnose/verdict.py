@@ -1,0 +1,207 @@
+"""Supported, doubtful, unsupported: the rules, and the sentences that give the reason.
+
+Sentences speak to a chemist, name the component and the place, and hold the numbers they rest on.
+"""
+
+from dataclasses import dataclass, field
+
+import numpy as np
+
+from unmix.kernels import FloatArray
+
+#: the three verdicts, from good to bad
+VERDICTS = ("supported", "doubtful", "unsupported")
+
+#: half-width of an interval, as a share of the signal of the components confused with each other
+_DOUBTFUL_SHARE = 0.10
+_UNSUPPORTED_SHARE = 0.25
+
+#: standard uncertainties below zero at which a negative amount says that the model is wrong
+NEGATIVE_LIMIT = 4.0
+
+#: bands named in a reason; the rest are counted
+_NAMED_BANDS = 3
+
+
+@dataclass(frozen=True)
+class Words:
+    """The names and units that sentences need."""
+
+    components: list[str]
+    amount_unit: str
+    axis_unit: str
+    baseline: str = "the baseline"
+
+    def amount(self, value: float) -> str:
+        """An amount with its unit, three significant digits."""
+        return f"{value:.3g} {self.amount_unit}".strip() if self.amount_unit != "1" else f"{value:.3g}"
+
+
+@dataclass(frozen=True)
+class Band:
+    """One band that the model does not explain, in units of the axis; ``height`` is signed."""
+
+    position: float
+    width: float
+    height: float
+    score: float
+    shift: FloatArray
+
+
+@dataclass
+class Evidence:
+    """What is known about one sample's answer, in units of amount.
+
+    ``groups`` holds the dependences of its design: condition index, components, whether a baseline term takes
+    part. Shares compare signals: an amount times the length of its pure spectrum.
+    """
+
+    concentration: FloatArray
+    lower: FloatArray
+    upper: FloatArray
+    detected: FloatArray
+    signal_length: FloatArray
+    n_terms: int
+    channels_used: int
+    channels_missing: int = 0
+    channels_saturated: int = 0
+    plateau: float = float("nan")
+    freedom: float = float("inf")
+    noise_level: float = float("nan")
+    noise_given: float | None = None
+    misfit_z: float = 0.0
+    misfit_limit: float = float("nan")
+    bands: list[Band] = field(default_factory=list)
+    harm: FloatArray = field(default_factory=lambda: np.zeros(0))
+    negative: FloatArray = field(default_factory=lambda: np.zeros(0))
+    groups: list[tuple[float, list[int]]] = field(default_factory=list)
+
+
+def judge(evidence: Evidence, words: Words) -> tuple[str, str]:
+    """Verdict and reason for one sample.
+
+    Parameters
+    ----------
+    evidence : Evidence
+    words : Words
+
+    Returns
+    -------
+    verdict : {'supported', 'doubtful', 'unsupported'}
+    reason : str
+        One sentence a finding, the gravest first; for a supported sample what speaks for it.
+    """
+    if evidence.channels_used < evidence.n_terms:
+        return VERDICTS[2], (
+            f"Only {evidence.channels_used} channels can be used for {evidence.n_terms} unknowns "
+            f"({_left_out(evidence)}); no amount can be given."
+        )
+    findings = [
+        *_confusion(evidence, words),
+        *_saturation(evidence),
+        *_misfit(evidence, words),
+        *_negative(evidence, words),
+        *_noise(evidence),
+    ]
+    if not findings:
+        return VERDICTS[0], _good(evidence)
+    findings.sort(key=lambda finding: -finding[0])
+    return VERDICTS[findings[0][0]], " ".join(text for _, text in findings)
+
+
+def _left_out(evidence: Evidence) -> str:
+    parts = []
+    if evidence.channels_saturated:
+        parts.append(f"{evidence.channels_saturated} are saturated")
+    if evidence.channels_missing:
+        parts.append(f"{evidence.channels_missing} have no value")
+    return ", ".join(parts) or "the others were left out"
+
+
+def _confusion(evidence: Evidence, words: Words) -> list[tuple[int, str]]:
+    found = []
+    for index, members in evidence.groups:
+        size = evidence.concentration[members] * evidence.signal_length[members]
+        half = 0.5 * (evidence.upper - evidence.lower)[members] * evidence.signal_length[members]
+        names = [words.components[j] for j in members]
+        who = " and ".join([", ".join(names[:-1]), names[-1]]) if len(names) > 1 else f"{names[0]} and {words.baseline}"
+        tail = f"condition index {index:.3g}" if index < 1e10 else "their spectra are the same up to a factor"
+        if np.isnan(half).any():
+            found.append((2, f"{who} cannot be told apart in these channels ({tail})."))
+            continue
+        total = float(size.sum())
+        if not evidence.detected[members].any() and np.isfinite(half).all():
+            continue
+        share = float(np.max(half)) / total if total > 0 else float("inf")
+        worst = members[int(np.argmax(half))]
+        wide = (f"the interval of {words.components[worst]} reaches {share:.0%} of their common signal up and down"
+                if np.isfinite(share) else "either could make up for the other without limit")  # fmt: skip
+        if share > _UNSUPPORTED_SHARE:
+            found.append((2, f"{who} cannot be told apart in these channels ({tail}): {wide}."))
+        elif share > _DOUBTFUL_SHARE:
+            found.append((1, f"{who} can hardly be told apart in these channels ({tail}): {wide}."))
+    return found
+
+
+def _saturation(evidence: Evidence) -> list[tuple[int, str]]:
+    n = evidence.channels_saturated
+    if n == 0:
+        return []
+    total = n + evidence.channels_used
+    where = f"flat near {evidence.plateau:.2g} absorbance" if np.isfinite(evidence.plateau) else "no light gets through"
+    if n > evidence.channels_used:
+        return [(2, f"Most channels, {n} of {total}, are saturated ({where}); measure with a shorter path.")]
+    return [(1, f"{n} of {total} channels are saturated ({where}) and were left out; the rest carries the answer.")]
+
+
+def _misfit(evidence: Evidence, words: Words) -> list[tuple[int, str]]:
+    found = []
+    for band in evidence.bands[:_NAMED_BANDS]:
+        harmed = int(np.argmax(np.abs(band.shift))) if band.shift.size else -1
+        harm = (f"; it could move {words.components[harmed]} by up to {words.amount(abs(float(band.shift[harmed])))}"
+                if harmed >= 0 else "")  # fmt: skip
+        place = f"{band.position:.5g} {words.axis_unit}, about {band.width:.2g} {words.axis_unit} wide,"
+        if band.height > 0:
+            text = f"A band at {place} is not explained (z = {band.score:.0f}){harm}."
+        else:
+            text = f"The fit puts in a band at {place} that the sample does not have (z = {band.score:.0f}){harm}."
+        found.append((1, text))
+    rest = len(evidence.bands) - _NAMED_BANDS
+    if rest > 0:
+        found.append((1, f"{rest} further bands are not explained."))
+    if found and evidence.harm.size:
+        bad = [j for j in np.flatnonzero(evidence.detected) if evidence.harm[j] >= evidence.concentration[j]]
+        if bad:
+            names = ", ".join(words.components[j] for j in bad)
+            found.append((2, f"What is not explained is as large as the amount of {names}."))
+    return found
+
+
+def _negative(evidence: Evidence, words: Words) -> list[tuple[int, str]]:
+    low = np.flatnonzero(evidence.negative < -NEGATIVE_LIMIT)
+    return [
+        (1, f"The best fit would need less than none of {words.components[j]} "
+            f"({-evidence.negative[j]:.1f} standard uncertainties below zero): a pure spectrum or the list is wrong.")
+        for j in low
+    ]  # fmt: skip
+
+
+def _noise(evidence: Evidence) -> list[tuple[int, str]]:
+    if evidence.freedom <= 0 and evidence.noise_given is None:
+        return [(1, f"{evidence.channels_used} channels for {evidence.n_terms} unknowns leave nothing to judge the "
+                    "noise by, so there is no interval; give the noise level.")]  # fmt: skip
+    if evidence.noise_given is not None and np.isfinite(evidence.noise_level):
+        ratio = evidence.noise_level / evidence.noise_given
+        if ratio > 1.0 + 4.0 / np.sqrt(2.0 * max(evidence.freedom, 1.0)):
+            return [(1, f"The residual is {ratio:.1f} times the noise that was given.")]
+    return []
+
+
+def _good(evidence: Evidence) -> str:
+    noise = f"The fit leaves {evidence.noise_level:.2g} absorbance" if np.isfinite(evidence.noise_level) else ""
+    if not noise:
+        return "The amounts follow from the noise that was given; no channel is left to test the fit."
+    if np.isnan(evidence.misfit_limit):
+        return f"{noise}; too few channels are left to test for a missing component."
+    return (f"{noise}, which is noise: no band is unexplained (largest |z| {abs(evidence.misfit_z):.1f}, "
+            f"limit {evidence.misfit_limit:.1f}).")  # fmt: skip

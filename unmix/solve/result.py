@@ -1,0 +1,259 @@
+"""Put labels, units, verdicts and reasons on the arrays of an answer."""
+
+from typing import TYPE_CHECKING, Any
+
+import numpy as np
+import xarray as xr
+
+from unmix.diagnose.conditioning import design_figures
+from unmix.diagnose.residual import Bands
+from unmix.diagnose.saturation import saturated
+from unmix.diagnose.verdict import Band, Evidence, Words, judge
+from unmix.kernels import BoolArray, FloatArray
+from unmix.kernels.linalg import polynomial_terms
+from unmix.solve.analysis import Answer, Progress
+from unmix.solve.paths import Paths
+from unmix.spectra import rows_of, spectral_dim
+from unmix.units import SPECTRAL_UNITS
+
+if TYPE_CHECKING:
+    from unmix.solve.known import KnownSpectra
+
+#: shown wherever a result is shown
+CAUTION = (
+    "A computed composition does not replace a validated method. Where a result can affect the safety of people, "
+    "product or plant, follow local rules and have it confirmed by licensed practice."
+)
+
+#: what bare pure spectra leave open
+REPRODUCIBILITY = (
+    "Only pure spectra were given: how well measurements repeat from sample to sample is unknown and not part of "
+    "the intervals, apart from what the residual of each sample shows."
+)
+
+#: variable -> (long name, whether it is in units of amount)
+_AMOUNTS = {
+    "concentration": "Concentration",
+    "standard_uncertainty": "Standard uncertainty of the concentration",
+    "lower": "Lower end of the interval",
+    "upper": "Upper end of the interval",
+    "critical_level": "Critical level: above it the component counts as detected",
+    "detection_limit": "Detection limit",
+    "quantification_limit": "Quantification limit",
+    "misfit_harm": "Possible shift by unexplained bands, included in the interval",
+}
+
+_FIGURES = {
+    "noise_level": ("Standard deviation of the noise of one channel", "signal"),
+    "noise_correlation_length": ("Correlation length of the noise", "channels"),
+    "misfit_z": ("Largest score of an unexplained band", "1"),
+    "misfit_limit": ("Limit of the score, one false alarm in a hundred spectra", "1"),
+}
+
+
+def assemble(
+    samples: xr.DataArray,
+    pure: xr.DataArray,
+    estimator: "KnownSpectra",
+    paths: Paths,
+    progress: Progress | None,
+) -> xr.Dataset:
+    """Run the estimator on labelled samples and label the answer.
+
+    Parameters
+    ----------
+    samples : DataArray, dims (..., spectral)
+    pure : DataArray, dims (component, spectral)
+        On the same channels.
+    estimator : KnownSpectra
+        Fitted to the pure spectra per unit path.
+    paths : Paths
+    progress : callable or None
+
+    Returns
+    -------
+    Dataset
+    """
+    rows = np.asarray(rows_of(samples), dtype=np.float64)
+    present = np.isfinite(rows)
+    bent, plateau = _bent(samples, rows)
+    usable = np.isfinite(estimator.pure_).all(axis=0)
+    used = present & ~bent & usable
+    uncertainty = _relative_uncertainty(pure)
+    answer = estimator.analyse(rows, used, pure_uncertainty=uncertainty, progress=progress)
+    _per_path(answer, paths.factor)
+    words = Words([str(c) for c in pure["component"].values], paths.amount_unit, SPECTRAL_UNITS[spectral_dim(samples)])
+    lost_light = samples.attrs.get("measured_as") == "transmittance"
+    judged = []
+    for i in range(rows.shape[0]):
+        missing = int((~present[i]).sum())
+        evidence = _evidence(answer, i, used[i], samples, estimator, paths)
+        evidence.plateau = float(plateau[i])
+        evidence.channels_saturated = int(bent[i].sum()) + (missing if lost_light else 0)
+        evidence.channels_missing = 0 if lost_light else missing
+        judged.append((*judge(evidence, words), evidence))
+    return _dataset(samples, pure, estimator, paths, answer, used, judged)
+
+
+def _bent(samples: xr.DataArray, rows: FloatArray) -> tuple[BoolArray, FloatArray]:
+    if samples.attrs.get("quantity") != "absorbance":
+        return np.zeros(rows.shape, dtype=bool), np.full(rows.shape[0], np.nan)
+    return saturated(rows)
+
+
+def _relative_uncertainty(pure: xr.DataArray) -> FloatArray:
+    if "relative_uncertainty" not in pure.coords:
+        return np.zeros(pure.sizes["component"])
+    return np.nan_to_num(np.asarray(pure["relative_uncertainty"].values, dtype=float))
+
+
+def _per_path(answer: Answer, factor: FloatArray) -> None:
+    """Amounts were found per unit path; divide by each sample's path."""
+    for name in _AMOUNTS:
+        values = getattr(answer, name)
+        values /= factor[:, None]
+    for i, found in enumerate(answer.bands):
+        if found is not None:
+            answer.bands[i] = found._replace(shift=found.shift / factor[i])
+
+
+def _evidence(
+    answer: Answer, i: int, used: BoolArray, samples: xr.DataArray, estimator: "KnownSpectra", paths: Paths
+) -> Evidence:
+    axis = np.asarray(samples[spectral_dim(samples)].values, dtype=float)
+    n_terms = estimator.pure_.shape[0] + (0 if estimator.baseline is None else estimator.baseline + 1)
+    noise = estimator.noise
+    concentration = answer.concentration[i]
+    with np.errstate(invalid="ignore"):
+        detected = concentration > answer.critical_level[i]
+    return Evidence(
+        concentration=concentration,
+        lower=answer.lower[i],
+        upper=answer.upper[i],
+        detected=np.asarray(detected),
+        signal_length=np.linalg.norm(np.nan_to_num(estimator.pure_[:, used]), axis=1) * paths.factor[i],
+        n_terms=n_terms,
+        channels_used=int(used.sum()),
+        freedom=float(np.nan_to_num(answer.freedom[i], nan=-1.0)),
+        noise_level=float(answer.noise_level[i]),
+        noise_given=None if noise is None else float(np.median(np.asarray(noise, dtype=float))),
+        misfit_z=float(answer.misfit_z[i]),
+        misfit_limit=float(answer.misfit_limit[i]),
+        bands=_bands(answer.bands[i], axis),
+        harm=answer.misfit_harm[i],
+        negative=answer.negative[i] if estimator.nonnegative else np.zeros(0),
+        groups=answer.groups[i],
+    )
+
+
+def _bands(found: Bands | None, axis: FloatArray) -> list[Band]:
+    if found is None:
+        return []
+    spacing = np.abs(np.gradient(axis)) if axis.size > 1 else np.ones(1)
+    return [
+        Band(float(axis[c]), float(w * spacing[c]), float(h), float(z), s)
+        for c, w, h, z, s in zip(*found, strict=True)
+    ]
+
+
+def _dataset(
+    samples: xr.DataArray,
+    pure: xr.DataArray,
+    estimator: "KnownSpectra",
+    paths: Paths,
+    answer: Answer,
+    used: BoolArray,
+    judged: list[tuple[str, str, Evidence]],
+) -> xr.Dataset:
+    dim = spectral_dim(samples)
+    leading = tuple(str(d) for d in samples.dims[:-1])
+    shape = tuple(samples.sizes[d] for d in leading)
+    signal_unit = "arbitrary" if samples.attrs.get("quantity") == "intensity" else "absorbance"
+
+    def over(values: Any, *more: str, name: str, units: str = "1") -> tuple[tuple[str, ...], Any, dict[str, str]]:
+        array = np.asarray(values)
+        return ((*leading, *more), array.reshape(*shape, *array.shape[1:]), {"long_name": name, "units": units})
+
+    evidence = [e for _, _, e in judged]
+    data: dict[str, Any] = {
+        name: over(getattr(answer, name), "component", name=text, units=paths.amount_unit)
+        for name, text in _AMOUNTS.items()
+    }
+    data["detected"] = over([e.detected for e in evidence], "component", name="Above the critical level")
+    measured = np.asarray(rows_of(samples), dtype=np.float64)
+    residual = np.where(used, measured - answer.fitted, np.nan)
+    curves = {
+        "measured": (measured, "Measured"),
+        "fitted": (answer.fitted, "Fitted"),
+        "residual": (residual, "Measured less fitted"),
+        "baseline": (answer.baseline, "Fitted baseline"),
+    }
+    data |= {key: over(values, dim, name=text, units=signal_unit) for key, (values, text) in curves.items()}
+    data["used"] = over(used, dim, name="Channel used in the fit")
+    for key, (text, unit) in _FIGURES.items():
+        data[key] = over(getattr(answer, key), name=text, units=signal_unit if unit == "signal" else unit)
+    counts = {
+        "channels_used": "Channels used",
+        "channels_missing": "Channels without a value",
+        "channels_saturated": "Saturated channels, left out",
+    }
+    for key, text in counts.items():
+        data[key] = over([getattr(e, key) for e in evidence], name=text, units="channels")
+    data["effective_channels"] = over(
+        data["channels_used"][1].ravel() / answer.noise_correlation_length,
+        name="Channels that carry independent noise", units="channels",
+    )  # fmt: skip
+    with np.errstate(invalid="ignore", divide="ignore"):
+        misfit = 100.0 * np.sqrt(np.nansum(residual**2, axis=1) / np.nansum(np.where(used, measured, np.nan) ** 2, axis=1))
+    data["lack_of_fit"] = over(misfit, name="Lack of fit", units="percent")
+    data["path_factor"] = over(paths.factor, name="Path in units of the pure spectra's path")
+    data["verdict"] = over([v for v, _, _ in judged], name="Verdict", units="")
+    data["reason"] = over([r for _, r, _ in judged], name="Reason for the verdict", units="")
+    data |= _band_table(evidence, over, SPECTRAL_UNITS[dim], signal_unit)
+    data |= _design(pure, estimator, dim, signal_unit, paths)
+    coords = {name: c for name, c in samples.coords.items() if name != dim}
+    built = xr.Dataset(data, coords={**coords, "component": pure["component"].values, dim: samples[dim]})
+    return built.assign_attrs(title="Composition from known pure spectra", caution=CAUTION,
+                              reproducibility=REPRODUCIBILITY)  # fmt: skip
+
+
+def _band_table(evidence: list[Evidence], over: Any, axis_unit: str, signal_unit: str) -> dict[str, Any]:
+    most = max((len(e.bands) for e in evidence), default=0)
+    names = {
+        "misfit_position": ("position", "Position of an unexplained band", axis_unit),
+        "misfit_width": ("width", "Full width at half height of an unexplained band", axis_unit),
+        "misfit_height": ("height", "Height of an unexplained band", signal_unit),
+        "misfit_score": ("score", "Score of an unexplained band", "1"),
+    }
+    table = {}
+    for key, (field, text, unit) in names.items():
+        values = np.full((len(evidence), most), np.nan)
+        for i, e in enumerate(evidence):
+            values[i, : len(e.bands)] = [getattr(b, field) for b in e.bands]
+        table[key] = over(values, "misfit_band", name=text, units=unit)
+    return table
+
+
+def _design(
+    pure: xr.DataArray, estimator: "KnownSpectra", dim: str, signal_unit: str, paths: Paths
+) -> dict[str, Any]:
+    """Pure spectra as used and their conditioning on all usable channels."""
+    usable = np.isfinite(estimator.pure_).all(axis=0)
+    axis = np.asarray(pure[dim].values, dtype=float)
+    free = polynomial_terms(axis, estimator.baseline)[usable]
+    figures = design_figures(estimator.pure_.T[usable], free)
+    names = pure["component"].values
+    partner = [str(names[j]) if j >= 0 else "" for j in figures.partner]
+    unit = f"{signal_unit} per {paths.amount_unit}"
+
+    def along(values: Any, text: str, units: str = "1") -> tuple[str, Any, dict[str, str]]:
+        return "component", np.asarray(values), {"long_name": text, "units": units}
+
+    return {
+        "pure_signal": (("component", dim), estimator.pure_,
+                        {"long_name": "Pure spectrum per unit amount and path", "units": unit}),
+        "variance_inflation": along(figures.inflation, "Variance inflation by overlap"),
+        "selectivity": along(figures.selectivity, "Share of the pure spectrum that is its own"),
+        "confused_with": along(partner, "Component it is most easily confused with", ""),
+        "condition_index": ((), float(figures.index.max()), {"long_name": "Largest condition index", "units": "1"}),
+    }  # fmt: skip
