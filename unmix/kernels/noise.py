@@ -107,7 +107,7 @@ def interpolation_stride(power: FloatArray) -> IntArray:
         if cut >= bins - 2:
             continue
         below = np.median(power[:, _TOUCHED : max((bins - 1) // s, _TOUCHED + 1)], axis=1)
-        empty = np.median(power[:, cut:], axis=1) < _EMPTY * below
+        empty = np.quantile(power[:, cut:], 0.9, axis=1) < _EMPTY * below
         stride[empty] = s
     return stride
 

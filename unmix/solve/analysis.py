@@ -28,6 +28,10 @@ from unmix.diagnose.residual import (
 from unmix.kernels import BoolArray, FloatArray, IntArray
 from unmix.kernels.gls import CHUNK, Design, GlsFit, fit, independent_stride, make_design
 
+#: the limit of the misfit score grows by this where a correlation was estimated, since the estimate is not exact
+#: (set so that right models are flagged in at most 2% of the cases; table in DEVELOPERS.md)
+COLOURED = 1.12
+
 #: called with the number of spectra finished so far
 Progress = Callable[[int], None]
 
@@ -201,7 +205,8 @@ class _Pattern:
         at_zero = np.where(np.isinf(relative), np.inf, at_zero)
         trust = np.inf if known else freedom
         amounts, reported = solved.terms[:, f:], solved.solution[:, f:]
-        scores, bands = self._misfit(solved, shared, sigma, freedom)
+        limit = shared.limit * (COLOURED if solved.filter.shape[1] > 1 else 1.0)
+        scores, bands = self._misfit(solved, shared, sigma, limit)
         harm, structured = _harm(solved, shared, bands, f)
         spread = np.maximum(at_zero, structured)
         spread = np.sqrt(spread**2 + (reported * self.pure_uncertainty) ** 2)
@@ -224,7 +229,7 @@ class _Pattern:
             answer.noise_level[rows] = self._level(solved, sigma)
         answer.noise_correlation_length[rows] = solved.length * stride
         answer.freedom[rows] = freedom
-        answer.misfit_z[rows], answer.misfit_limit[rows] = scores, shared.limit
+        answer.misfit_z[rows], answer.misfit_limit[rows] = scores, limit
         for row, found_bands in zip(rows, bands, strict=True):
             if found_bands is not None:
                 answer.bands[row] = found_bands._replace(
@@ -244,9 +249,9 @@ class _Pattern:
         return level
 
     def _misfit(
-        self, solved: GlsFit, shared: "_Strided", sigma: FloatArray, freedom: float
+        self, solved: GlsFit, shared: "_Strided", sigma: FloatArray, limit: float
     ) -> tuple[FloatArray, list[Bands | None]]:
-        n = solved.terms.shape[0]
+        n, freedom = solved.terms.shape[0], float(shared.design.freedom)
         if freedom < FEWEST_FREEDOM:
             return np.full(n, np.nan), [None] * n
         filters = FilterPair(solved.filter, shared.design.used)
@@ -260,7 +265,7 @@ class _Pattern:
         z = along / denominators(energy, projected) / safe[:, None, None]
         score, _, _ = largest(z)
         bands: list[Bands | None] = [None] * n
-        for i in np.flatnonzero(np.abs(score) > shared.limit):
+        for i in np.flatnonzero(np.abs(score) > limit):
             one = Whitened(
                 solved.residual[i],
                 solved.basis[min(i, solved.basis.shape[0] - 1)],
@@ -269,7 +274,7 @@ class _Pattern:
                 energy[min(i, energy.shape[0] - 1)],
                 freedom,
             )
-            bands[i] = unexplained_bands(one, shared.templates, shared.limit)
+            bands[i] = unexplained_bands(one, shared.templates, limit)
         return score, bands
 
 
