@@ -19,7 +19,7 @@ class Conditioning(NamedTuple):
 
     Attributes
     ----------
-    index : ndarray, shape (m,)
+    indices : ndarray, shape (m,)
         Condition indices, increasing.
     proportion : ndarray, shape (m, m)
         Variance-decomposition proportions, index by term; components first, then baseline terms.
@@ -37,7 +37,7 @@ class Conditioning(NamedTuple):
         The other component that each is most confused with; -1 where it stands out by itself.
     """
 
-    index: FloatArray
+    indices: FloatArray
     proportion: FloatArray
     inflation: FloatArray
     selectivity: FloatArray
@@ -83,7 +83,7 @@ def design_figures(signal: FloatArray, free: FloatArray) -> Conditioning:
     with np.errstate(divide="ignore"):
         inflation = 1.0 / selectivity**2
     angle = _angles(clear)
-    return Conditioning(found.index, found.proportion, inflation, selectivity, angle, unit_uncertainty, net,
+    return Conditioning(found.indices, found.proportion, inflation, selectivity, angle, unit_uncertainty, net,
                         _partners(clear, selectivity, k))  # fmt: skip
 
 
@@ -124,17 +124,17 @@ def dependent_groups(figures: Conditioning, k: int) -> list[tuple[float, list[in
     A group has two or more terms (baseline terms included) with a large share of their variance on the index; where
     several indices compete for the variance their shares are added up, as Belsley, Kuh and Welsch advise.
     """
-    strong = np.flatnonzero(figures.index >= STRONG_INDEX)
+    strong = np.flatnonzero(figures.indices >= STRONG_INDEX)
     if strong.size == 0:
         return []
     share = figures.proportion[strong]
     groups = []
-    for row, index in zip(share, figures.index[strong], strict=True):
+    for row, index in zip(share, figures.indices[strong], strict=True):
         members = np.flatnonzero(row > LARGE_SHARE)
         if members.size >= 2 and (inside := [int(j) for j in members if j < k]):
             groups.append((float(index), inside))
     if not groups:
         members = np.flatnonzero(share.sum(axis=0) > LARGE_SHARE)
         if members.size >= 2 and (inside := [int(j) for j in members if j < k]):
-            groups.append((float(figures.index[strong].max()), inside))
+            groups.append((float(figures.indices[strong].max()), inside))
     return groups

@@ -16,6 +16,13 @@ VERDICTS = ("supported", "doubtful", "unsupported")
 _DOUBTFUL_SHARE = 0.10
 _UNSUPPORTED_SHARE = 0.25
 
+#: condition index at which an error of one part in a hundred in a pure spectrum, which nobody can exclude, is enough
+#: to exchange the components (100 also is where Belsley, Kuh and Welsch see numbers in trouble)
+_EXCHANGEABLE = 100.0
+
+#: a group of components is there when its common signal is this many times its noise
+_PRESENT = 5.0
+
 #: standard uncertainties below zero at which a negative amount says that the model is wrong
 NEGATIVE_LIMIT = 4.0
 
@@ -130,16 +137,18 @@ def _confusion(evidence: Evidence, words: Words) -> list[tuple[int, str]]:
             found.append((2, f"{who} cannot be told apart in these channels ({tail})."))
             continue
         total = float(size.sum())
-        if not evidence.detected[members].any() and np.isfinite(half).all():
+        noise = evidence.noise_level if np.isfinite(evidence.noise_level) else evidence.noise_given or 0.0
+        if np.isfinite(half).all() and total < _PRESENT * noise:
             continue
         share = float(np.max(half)) / total if total > 0 else float("inf")
-        worst = members[int(np.argmax(half))]
-        wide = (f"the interval of {words.components[worst]} reaches {share:.0%} of their common signal up and down"
-                if np.isfinite(share) else "either could make up for the other without limit")  # fmt: skip
-        if share > _UNSUPPORTED_SHARE:
-            found.append((2, f"{who} cannot be told apart in these channels ({tail}): {wide}."))
+        worst = words.components[members[int(np.argmax(half))]]
+        if index >= _EXCHANGEABLE:
+            detail = f"an error of {100 / index:.1g}% in a pure spectrum would be enough to exchange them"
+            found.append((2, f"{who} cannot be told apart in these channels ({tail}): {detail}."))
         elif share > _DOUBTFUL_SHARE:
-            found.append((1, f"{who} can hardly be told apart in these channels ({tail}): {wide}."))
+            hardly, grade = ("can hardly", 1) if share <= _UNSUPPORTED_SHARE else ("cannot", 2)
+            detail = f"the interval of {worst} reaches {share:.0%} of their common signal up and down"
+            found.append((grade, f"{who} {hardly} be told apart in these channels ({tail}): {detail}."))
     return found
 
 

@@ -135,7 +135,7 @@ def fit(y: FloatArray, design: Design, *, correlated: bool = True) -> list[tuple
             rows := np.flatnonzero(model.order == order),
             _white(y[rows], rest[rows], design)
             if order == 0
-            else _coloured(y[rows], design, Autoregression(*(part[rows] for part in model))),
+            else _coloured(y[rows], design, Autoregression(model.order[rows], model.predictor[rows], model.gain[rows])),
         )
         for order in np.unique(model.order)
     ]
@@ -185,6 +185,7 @@ def _coloured(y: FloatArray, design: Design, model: Autoregression) -> GlsFit:
 
 
 def _solve(reduced: Reduced, z: FloatArray) -> FloatArray:
+    x: FloatArray
     if reduced.rank == reduced.r.shape[0]:
         x = solve_triangular(reduced.r, z.T).T
     else:

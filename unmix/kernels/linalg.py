@@ -121,15 +121,15 @@ class Collinearity(NamedTuple):
 
     Attributes
     ----------
-    index : ndarray, shape (columns,)
+    indices : ndarray, shape (columns,)
         Condition indices, increasing.
     proportion : ndarray, shape (columns, columns)
         Share of the variance of each column (second axis) that belongs to each index (first axis).
     direction : ndarray, shape (columns, columns)
-        Right singular vectors as rows, in the order of ``index``.
+        Right singular vectors as rows, in the order of ``indices``.
     """
 
-    index: FloatArray
+    indices: FloatArray
     proportion: FloatArray
     direction: FloatArray
 

@@ -23,7 +23,7 @@ _FLAT = 1e-14
 _NEARLY_SINGULAR = 1e-12
 
 
-def nnls(A: FloatArray, Y: FloatArray) -> FloatArray:  # noqa: N803  the fixed name of the design
+def nnls(A: FloatArray, Y: FloatArray) -> FloatArray:
     """Minimise ||A x - y|| subject to x >= 0 for every row y of Y.
 
     Parameters
@@ -65,7 +65,7 @@ def nnls_reduced(r: FloatArray, z: FloatArray) -> FloatArray:
     ndarray, shape (spectra, components)
     """
     n, k = z.shape[0], r.shape[1]
-    x = np.zeros((n, k))
+    x: FloatArray = np.zeros((n, k))
     if n == 0 or k == 0:
         return x
     size = np.linalg.norm(z, axis=1)

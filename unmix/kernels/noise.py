@@ -168,7 +168,8 @@ def _model_power(predictor: FloatArray, gain: FloatArray, order: IntArray, lengt
     rows = np.arange(order.size)
     chosen = predictor[rows, order]
     error_filter = np.concatenate([np.ones((order.size, 1)), -chosen], axis=1)
-    return gain[rows, order][:, None] / np.abs(np.fft.rfft(error_filter, n=length, axis=1)) ** 2
+    power: FloatArray = gain[rows, order][:, None] / np.abs(np.fft.rfft(error_filter, n=length, axis=1)) ** 2
+    return power
 
 
 def whiten(x: FloatArray, model: Autoregression, used: BoolArray) -> FloatArray:

@@ -5,6 +5,7 @@ The estimator and the labelled function stand in ``known``; the sentences of the
 
 from collections.abc import Callable, Iterator
 from dataclasses import dataclass
+from typing import Any
 
 import numpy as np
 from scipy.signal import lfilter
@@ -48,6 +49,13 @@ class Settings:
     noise: FloatArray | None = None
 
 
+#: arrays of an answer by shape: amounts (spectra, components), curves (spectra, channels), figures (spectra,)
+AMOUNTS = ("concentration", "standard_uncertainty", "lower", "upper", "critical_level", "detection_limit",
+           "quantification_limit", "misfit_harm", "negative")  # fmt: skip
+CURVES = ("fitted", "baseline")
+FIGURES = ("noise_level", "noise_correlation_length", "freedom", "misfit_z", "misfit_limit")
+
+
 @dataclass
 class Answer:
     """Arrays of the answer, one row a spectrum, NaN where a spectrum could not be answered.
@@ -78,10 +86,9 @@ class Answer:
     @classmethod
     def empty(cls, n: int, k: int, p: int) -> "Answer":
         """All NaN, no bands."""
-        amounts = [np.full((n, k), np.nan) for _ in range(9)]
-        curves = [np.full((n, p), np.nan) for _ in range(2)]
-        figures = [np.full(n, np.nan) for _ in range(5)]
-        return cls(*amounts, *curves, *figures, bands=[None] * n, groups=[[] for _ in range(n)])
+        shapes = dict.fromkeys(AMOUNTS, (n, k)) | dict.fromkeys(CURVES, (n, p)) | dict.fromkeys(FIGURES, (n,))
+        arrays: dict[str, Any] = {name: np.full(shape, np.nan) for name, shape in shapes.items()}
+        return cls(**arrays, bands=[None] * n, groups=[[] for _ in range(n)])
 
 
 def analyse(

@@ -20,7 +20,7 @@ from unmix.provenance import provenance
 from unmix.solve.analysis import Answer, Progress, Settings, analyse
 from unmix.solve.paths import path_of, scale_to_path
 from unmix.solve.result import assemble
-from unmix.spectra import as_absorbance, as_pure, rows_of, spectral_dim
+from unmix.spectra import as_absorbance, as_pure, spectral_dim
 
 
 class KnownSpectra(MultiOutputMixin, RegressorMixin, BaseEstimator):
@@ -85,7 +85,7 @@ class KnownSpectra(MultiOutputMixin, RegressorMixin, BaseEstimator):
         tags.regressor_tags.poor_score = True
         return tags
 
-    def fit(self, X: Any, y: Any = None) -> Self:  # noqa: N803  scikit-learn's name
+    def fit(self, X: Any, y: Any = None) -> Self:
         """Take or learn the pure spectra.
 
         Parameters
@@ -126,7 +126,7 @@ class KnownSpectra(MultiOutputMixin, RegressorMixin, BaseEstimator):
         self._free = polynomial_terms(positions, self.baseline)
         return self
 
-    def predict(self, X: Any) -> FloatArray:  # noqa: N803  scikit-learn's name
+    def predict(self, X: Any) -> FloatArray:
         """Amounts of the components.
 
         Parameters
@@ -143,7 +143,7 @@ class KnownSpectra(MultiOutputMixin, RegressorMixin, BaseEstimator):
         return amounts[:, 0] if self._flat else amounts
 
     def analyse(self, X: Any, used: Any = None, *, pure_uncertainty: Any = 0.0,
-                progress: Progress | None = None) -> Answer:  # noqa: N803  fmt: skip
+                progress: Progress | None = None) -> Answer:
         """Amounts with intervals, limits, fit and misfit, as plain arrays.
 
         Parameters
@@ -195,7 +195,7 @@ def quantify(
     path_length: Any = None,
     progress: Progress | None = None,
 ) -> xr.Dataset:
-    """How much of each known component is in each sample, how sure, and is something missing from the list?
+    """Find how much of each known component is in each sample, how sure, and whether something is missing.
 
     Parameters
     ----------

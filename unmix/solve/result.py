@@ -104,7 +104,8 @@ def _bent(samples: xr.DataArray, rows: FloatArray) -> tuple[BoolArray, FloatArra
 def _relative_uncertainty(pure: xr.DataArray) -> FloatArray:
     if "relative_uncertainty" not in pure.coords:
         return np.zeros(pure.sizes["component"])
-    return np.nan_to_num(np.asarray(pure["relative_uncertainty"].values, dtype=float))
+    given: FloatArray = np.nan_to_num(np.asarray(pure["relative_uncertainty"].values, dtype=float))
+    return given
 
 
 def _per_path(answer: Answer, factor: FloatArray) -> None:
@@ -204,7 +205,8 @@ def _dataset(
         name="Channels that carry independent noise", units="channels",
     )  # fmt: skip
     with np.errstate(invalid="ignore", divide="ignore"):
-        misfit = 100.0 * np.sqrt(np.nansum(residual**2, axis=1) / np.nansum(np.where(used, measured, np.nan) ** 2, axis=1))
+        signal = np.where(used, measured, np.nan)
+        misfit = 100.0 * np.sqrt(np.nansum(residual**2, axis=1) / np.nansum(signal**2, axis=1))
     data["lack_of_fit"] = over(misfit, name="Lack of fit", units="percent")
     data["path_factor"] = over(paths.factor, name="Path in units of the pure spectra's path")
     data["verdict"] = over([v for v, _, _ in judged], name="Verdict", units="")
@@ -255,5 +257,5 @@ def _design(
         "variance_inflation": along(figures.inflation, "Variance inflation by overlap"),
         "selectivity": along(figures.selectivity, "Share of the pure spectrum that is its own"),
         "confused_with": along(partner, "Component it is most easily confused with", ""),
-        "condition_index": ((), float(figures.index.max()), {"long_name": "Largest condition index", "units": "1"}),
+        "condition_index": ((), float(figures.indices.max()), {"long_name": "Largest condition index", "units": "1"}),
     }  # fmt: skip
