@@ -96,7 +96,7 @@ class Result:
         return str(self.data.attrs.get(attribute, ""))
 
     def entries(self, attribute: str) -> Any:
-        """An attribute that holds JSON, None when it is not there; a text that is no JSON becomes a list of it."""
+        """An attribute that holds JSON (None where it is not there); other text becomes a list of one."""
         found = self.data.attrs.get(attribute)
         if not isinstance(found, str):
             return found
@@ -168,20 +168,26 @@ class Composition(Result):
             return np.asarray(self._flat(self.data["detected"], ["component"]), dtype=bool)
         return self.table("lower") > 0
 
-    def curve(self, variable: str, sample: int) -> FloatArray | None:
-        """A curve of one sample along the spectral axis, None when the result does not have it."""
+    def curve(self, variable: str, sample: int) -> FloatArray:
+        """A curve of one sample along the spectral axis, NaN when the result does not have it."""
         if variable not in self.data:
-            return None
-        return np.asarray(self._flat(self.data[variable], [self.dim])[sample])
+            return np.full(self.axis.size, np.nan)
+        return np.asarray(self._flat(self.data[variable], [self.dim])[sample], dtype=float)
 
-    def contribution(self, sample: int, component: int) -> FloatArray | None:
-        """What one component adds to the spectrum of one sample, as the result defines it."""
+    def factors(self) -> FloatArray:
+        """What the path length of each sample multiplies the signal of a unit amount with."""
+        return self.per_sample("path_factor") if "path_factor" in self.data else np.ones(len(self))
+
+    def signals(self) -> FloatArray:
+        """The pure spectra as used, (components, channels); NaN when the result does not have them."""
         if "pure_signal" not in self.data:
-            return None
-        factor = self.per_sample("path_factor")[sample] if "path_factor" in self.data else 1.0
-        amount = self.table("concentration")[sample, component]
-        signal = self.data["pure_signal"].transpose("component", self.dim).values[component]
-        return np.asarray(amount * factor * signal, dtype=float)
+            return np.full((len(self.components), self.axis.size), np.nan)
+        return np.asarray(self.data["pure_signal"].transpose("component", self.dim).values, dtype=float)
+
+    def contributions(self, sample: int) -> FloatArray:
+        """What each component adds to the spectrum of one sample, (components, channels)."""
+        amounts = self.table("concentration")[sample] * self.factors()[sample]
+        return np.asarray(amounts[:, np.newaxis] * self.signals(), dtype=float)
 
     def unexplained(self, sample: int) -> list[dict[str, float]]:
         """The bands that no component explains: position, width, height and score, the strongest first."""
