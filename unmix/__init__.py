@@ -8,9 +8,9 @@ from importlib.metadata import PackageNotFoundError, version
 from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
-    from unmix.diagnose.conditioning import conditioning
     from unmix.read import read, write
     from unmix.report.page import report
+    from unmix.solve.design import conditioning
     from unmix.solve.known import quantify
 
 #: public name -> the module that holds it
@@ -18,7 +18,7 @@ _HOMES = {
     "read": "unmix.read",
     "write": "unmix.read",
     "quantify": "unmix.solve.known",
-    "conditioning": "unmix.diagnose.conditioning",
+    "conditioning": "unmix.solve.design",
     "report": "unmix.report.page",
 }
 

@@ -37,7 +37,6 @@ class Words:
     components: list[str]
     amount_unit: str
     axis_unit: str
-    baseline: str = "the baseline"
 
     def amount(self, value: float) -> str:
         """An amount with its unit, three significant digits."""
@@ -130,9 +129,7 @@ def _confusion(evidence: Evidence, words: Words) -> list[tuple[int, str]]:
     for index, members in evidence.groups:
         size = evidence.concentration[members] * evidence.signal_length[members]
         half = 0.5 * (evidence.upper - evidence.lower)[members] * evidence.signal_length[members]
-        names = [words.components[j] for j in members]
-        who = " and ".join([", ".join(names[:-1]), names[-1]]) if len(names) > 1 else f"{names[0]} and {words.baseline}"
-        tail = f"condition index {index:.3g}" if index < 1e10 else "their spectra are the same up to a factor"
+        who, tail = _who([words.components[j] for j in members]), _tail(index)
         if np.isnan(half).any():
             found.append((2, f"{who} cannot be told apart in these channels ({tail})."))
             continue
@@ -214,3 +211,42 @@ def _good(evidence: Evidence) -> str:
         return f"{noise}; too few channels are left to test for a missing component."
     return (f"{noise}, which is noise: no band is unexplained (largest |z| {abs(evidence.misfit_z):.1f}, "
             f"limit {evidence.misfit_limit:.1f}).")  # fmt: skip
+
+
+def judge_design(
+    groups: list[tuple[float, list[int]]], largest: float, names: list[str], limit: float
+) -> tuple[str, str]:
+    """Verdict and reason for pure spectra before any sample is measured.
+
+    Parameters
+    ----------
+    groups : list of (condition index, members)
+        Strong dependences.
+    largest : float
+        Largest condition index.
+    names : list of str
+        Of the components.
+    limit : float
+        Condition index from which a dependence is strong.
+    """
+    if not groups:
+        return VERDICTS[0], f"The components can be told apart (condition index {largest:.3g}, limit {limit:g})."
+    found = []
+    for index, members in groups:
+        who = _who([names[j] for j in members])
+        if index >= _EXCHANGEABLE:
+            found.append((2, f"{who} cannot be told apart in these channels ({_tail(index)}): an error of "
+                             f"{100 / index:.1g}% in a pure spectrum would be enough to exchange them."))  # fmt: skip
+        else:
+            found.append((1, f"{who} can hardly be told apart in these channels ({_tail(index)})."))
+    return VERDICTS[max(grade for grade, _ in found)], " ".join(text for _, text in found)
+
+
+def _who(names: list[str]) -> str:
+    if len(names) == 1:
+        return f"{names[0]} and the baseline"
+    return f"{', '.join(names[:-1])} and {names[-1]}"
+
+
+def _tail(index: float) -> str:
+    return f"condition index {index:.3g}" if index < 1e10 else "their spectra are the same up to a factor"

@@ -18,6 +18,7 @@ from unmix.kernels.linalg import polynomial_terms
 from unmix.prepare.axis import common_axis, select_regions
 from unmix.provenance import provenance
 from unmix.solve.analysis import Answer, Progress, Settings, analyse
+from unmix.solve.options import check_baseline, check_level, check_noise
 from unmix.solve.paths import path_of, scale_to_path
 from unmix.solve.result import assemble
 from unmix.spectra import as_absorbance, as_pure, spectral_dim
@@ -102,7 +103,8 @@ class KnownSpectra(MultiOutputMixin, RegressorMixin, BaseEstimator):
         Raises
         ------
         InputError
-            When an option is out of range or the amounts do not determine the pure spectra.
+            When an option is out of range, the axis does not fit the spectra, or the amounts do not determine
+            the pure spectra.
         """
         self._check()
         if y is None:
@@ -113,12 +115,14 @@ class KnownSpectra(MultiOutputMixin, RegressorMixin, BaseEstimator):
             spectra, amounts = validate_data(self, X, y, dtype=np.float64, multi_output=True, y_numeric=True)
             self._flat = amounts.ndim == 1
             amounts = amounts.reshape(spectra.shape[0], -1).astype(np.float64)
-            pure = np.linalg.lstsq(amounts, spectra, rcond=None)[0]
+            pure, _, rank, _ = np.linalg.lstsq(amounts, spectra, rcond=None)
+            if rank < amounts.shape[1]:
+                raise InputError(
+                    f"{amounts.shape[0]} spectra whose amounts have rank {rank} do not determine "
+                    f"{amounts.shape[1]} pure spectra",
+                    accepted="give standards in which every component varies on its own",
+                )
         channels = spectra.shape[1]
-        terms = pure.shape[0] + (0 if self.baseline is None else self.baseline + 1)
-        if y is not None and channels < terms:
-            raise InputError(f"n_features = {channels}: {channels} channels cannot determine {terms} unknowns",
-                             accepted="give more channels or a lower baseline order")  # fmt: skip
         positions = np.arange(channels, dtype=float) if self.axis is None else np.asarray(self.axis, dtype=float)
         if positions.shape != (channels,):
             raise InputError(f"axis has shape {positions.shape} but the spectra have {channels} channels")
@@ -127,7 +131,7 @@ class KnownSpectra(MultiOutputMixin, RegressorMixin, BaseEstimator):
         return self
 
     def predict(self, X: Any) -> FloatArray:
-        """Amounts of the components.
+        """Amounts of the components; NaN where a spectrum has fewer usable channels than there are unknowns.
 
         Parameters
         ----------
@@ -170,17 +174,9 @@ class KnownSpectra(MultiOutputMixin, RegressorMixin, BaseEstimator):
         return analyse(spectra, counts, self.pure_.T, self._free, relative, settings, progress)
 
     def _check(self) -> None:
-        if self.baseline is not None and (isinstance(self.baseline, bool) or self.baseline != int(self.baseline)
-                                          or not 0 <= self.baseline <= 20):  # fmt: skip
-            raise InputError(f"baseline is {self.baseline!r}",
-                             accepted="give None, or the order of a polynomial from 0 to 20")  # fmt: skip
-        if not 0.0 < float(self.level) < 1.0:
-            raise InputError(f"level is {self.level!r}", accepted="give a coverage between 0 and 1, such as 0.95")
-        if self.noise is not None:
-            noise = np.asarray(self.noise, dtype=float)
-            if not (np.isfinite(noise).all() and (noise > 0).all()):
-                raise InputError(f"noise is {self.noise!r}",
-                                 accepted="give a standard deviation above zero, one or one a channel")  # fmt: skip
+        check_baseline(self.baseline)
+        check_level(self.level)
+        check_noise(self.noise)
 
 
 def quantify(

@@ -95,12 +95,12 @@ def _sample_lengths(samples: xr.DataArray, path_length: Any, n: int) -> tuple[Fl
     if found is None:
         return None, ""
     values = found.values if isinstance(found, xr.DataArray) else found
-    lengths = np.broadcast_to(np.asarray(values, dtype=float).ravel(), (n,)) if np.size(values) == 1 else np.ravel(values)
+    lengths = np.ravel(np.asarray(values, dtype=float))
     if np.isnan(lengths).all():
         return None, ""
     for one in lengths:
         length_in_cm(one, name="path_length of the spectra")
-    return np.asarray(lengths, dtype=float), "samples"
+    return (np.full(n, lengths[0]) if lengths.size == 1 else lengths), "samples"
 
 
 def _pure_lengths(pure: xr.DataArray, k: int) -> FloatArray | None:
