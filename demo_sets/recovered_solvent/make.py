@@ -177,9 +177,9 @@ DRUMS = (
     # the wrong cell, 250 um: strong bands end flat at the stray light of the instrument, A = 2.5
     Drum("drum-06", "DIFDUP", (0.930, 0.020, 0.015, 0.005, 0.030, 0.0), (0.005, 0.001, 0.0),
          path_cm=0.025, stray_light=10**-2.5),
-    # a filter instrument that sees only the flanks of two carbonyl bands
+    # a filter instrument that sees only the flanks between two carbonyl bands
     Drum("drum-07", "CSV", (0.880, 0.045, 0.050, 0.010, 0.015, 0.0), (0.008, 0.0, 0.0),
-         noise=5e-4, region=(1716.0, 1744.0)),
+         noise=5e-4, region=(1720.0, 1740.0)),
     # the source warmed up during the scan: a bent baseline, which a straight line cannot follow
     Drum("drum-08", "AFFN", (0.920, 0.025, 0.015, 0.010, 0.030, 0.0), (0.030, 0.025, 0.020)),
 )  # fmt: skip
@@ -287,14 +287,14 @@ def write_jcamp(path: Path, axis: FloatArray, values: FloatArray, labels: dict[s
 
 
 def write_table(
-    path: Path, axis: FloatArray, values: FloatArray, title: str, *, continental: bool = False
+    path: Path, axis: FloatArray, values: FloatArray, head: list[str], *, continental: bool = False
 ) -> None:
-    """Two columns with a heading; ``continental`` is semicolons between columns and commas for decimals."""
+    """Two columns under lines of headings; ``continental`` is semicolons between columns, commas for decimals."""
     lines = [f"{x:.1f},{y:.6f}" for x, y in zip(axis, values, strict=True)]
+    text = "\n".join([*head, *lines, ""])
     if continental:
-        lines = [line.replace(",", ";").replace(".", ",") for line in lines]
-    heading = f"Wavenumber (cm-1){';' if continental else ','}{title}"
-    path.write_text("\n".join([heading, *lines, ""]), encoding="ascii", newline="\n")
+        text = text.replace(",", ";").replace(".", ",")
+    path.write_text(text, encoding="ascii", newline="\n")
 
 
 def write_pure(folder: Path) -> None:
@@ -304,7 +304,7 @@ def write_pure(folder: Path) -> None:
         values = absorptivity(name, axis)
         stem = name.replace(" ", "_")
         if name == "water":
-            write_table(folder / f"{stem}.csv", axis, values, f"{name} ((g/L)-1 cm-1)")
+            write_table(folder / f"{stem}.csv", axis, values, [f"Wavenumber (cm-1),{name} ((g/L)-1 cm-1)"])
         else:
             form = "AFFN" if name == "toluene" else "DIFDUP"
             labels = {"TITLE": name, "YUNITS": "(g/L)-1 cm-1 (base 10)"}
@@ -321,8 +321,9 @@ def write_drums(folder: Path) -> None:
             labels = {"TITLE": drum.label, "PATHLENGTH": f"{drum.path_cm:g} cm", "YUNITS": "ABSORBANCE"}
             write_jcamp(folder / f"{drum.label}.jdx", inside, values, labels, drum.form)
         else:
+            head = [f"Sample,{drum.label}", "Path length,25 um", "Wavenumber (cm-1),Absorbance"]
             table = folder / f"{drum.label}.csv"
-            write_table(table, inside, values, "Absorbance", continental=drum.form == "CSV;")
+            write_table(table, inside, values, head, continental=drum.form == "CSV;")
 
 
 def write_truth(path: Path) -> None:
