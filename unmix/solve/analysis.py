@@ -264,7 +264,7 @@ class _Pattern:
         filters = FilterPair(solved.filter, shared.design.used)
         along = correlate(filters.transpose(solved.residual[:, None])[:, 0], shared.templates)
         energy = shared.energy(filters)
-        if solved.basis.shape[0] == 1:
+        if solved.filter.shape[1] == 1:
             projected = np.sum(correlate(solved.basis, shared.templates) ** 2, axis=1)
         else:
             projected = np.sum(correlate(filters.transpose(solved.basis), shared.templates) ** 2, axis=1)
