@@ -3,8 +3,10 @@
 The door: every public name is loaded from its module on first use, so that ``import unmix`` stays light.
 """
 
+import sys
 from importlib import import_module
 from importlib.metadata import PackageNotFoundError, version
+from types import ModuleType
 from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
@@ -39,3 +41,15 @@ def __getattr__(name: str) -> Any:
 
 def __dir__() -> list[str]:
     return [*__all__, "__version__"]
+
+
+class _Door(ModuleType):
+    """Keeps ``unmix.read`` and ``unmix.report`` the functions when the packages of the same name are imported."""
+
+    def __setattr__(self, name: str, value: Any) -> None:
+        # Python binds an imported package to its parent; the public function of that name would be lost
+        if not (name in _HOMES and isinstance(value, ModuleType)):
+            super().__setattr__(name, value)
+
+
+sys.modules[__name__].__class__ = _Door

@@ -1,0 +1,253 @@
+"""The layout of a table: where its axis runs, which row or column holds what, and which heading says which unit.
+
+Works on rows of cells, whether they came from a text file or a spreadsheet. What is ambiguous is an error that
+names the argument which settles it.
+"""
+
+from collections.abc import Sequence
+from dataclasses import dataclass, field
+from itertools import pairwise
+
+import numpy as np
+
+from unmix.errors import ReadError
+from unmix.read.delimited import Dialect, Row, is_data
+from unmix.read.found import Options
+from unmix.read.headings import LABEL_WORDS, Metadata, axis_cell, axis_heading, ordinate_heading, take_line
+
+#: fewer positions than this in a heading line are no axis
+_SHORTEST_AXIS = 3
+
+
+@dataclass
+class Layout:
+    """Where everything stands.
+
+    Attributes
+    ----------
+    orientation : {'columns', 'rows', 'pairs'}
+        One spectrum a column, one a row, or one in each pair of columns with an axis of its own.
+    width : int
+        Cells in every row of numbers.
+    first_line : int
+        Line of the first row of numbers.
+    headings : list of list of str
+        Rows between the metadata and the numbers, each ``width`` cells.
+    axis_start : int
+        For rows: the first column that belongs to the spectrum.
+    axis : list of float
+        For rows: the positions.
+    axis_text : str
+        The axis unit as written, empty where it is not.
+    metadata : Metadata
+        What the lines before say.
+    """
+
+    orientation: str
+    width: int
+    first_line: int
+    headings: list[list[str]] = field(default_factory=list)
+    axis_start: int = 0
+    axis: list[float] = field(default_factory=list)
+    axis_text: str = ""
+    metadata: Metadata = field(default_factory=Metadata)
+
+
+def find_layout(head: Sequence[Row], dialect: Dialect, options: Options, *, file: str) -> Layout:
+    """Find the layout of a table from its first rows.
+
+    Parameters
+    ----------
+    head : sequence of (int, list of str)
+        Numbered rows of cells from the start of the table.
+    dialect : Dialect
+        How numbers are written.
+    options : Options
+        ``orientation`` settles what is ambiguous.
+    file : str
+        For messages.
+
+    Raises
+    ------
+    ReadError
+        When there are no numbers, no axis, or two possible ones.
+    """
+    start, stop = _numbers(head, dialect)
+    if stop <= start:
+        raise ReadError("no rows of numbers were found", path=file,
+                        accepted="a table has two or more columns of numbers")  # fmt: skip
+    width = len(head[start][1])
+    metadata, headings = _before(head[:start], width)
+    data = head[start:stop]
+    columns = _columns(data, headings, dialect)
+    rows = _rows(data, headings, dialect)
+    chosen = _choose(columns, rows, data, options, file)
+    chosen.metadata = metadata
+    return chosen
+
+
+def _numbers(head: Sequence[Row], dialect: Dialect) -> tuple[int, int]:
+    """The longest stretch of rows of numbers with equally many cells: its start and its end."""
+    best = (0, 0)
+    start = 0
+    for i, (_, cells) in enumerate(head):
+        if not is_data(cells, dialect):
+            start = i + 1
+        elif i > start and len(cells) != len(head[start][1]):
+            start = i
+        if i + 1 - start > best[1] - best[0]:
+            best = (start, i + 1)
+    return best
+
+
+def _before(rows: Sequence[Row], width: int) -> tuple[Metadata, list[list[str]]]:
+    """Metadata and heading rows from what stands before the numbers; headings touch the numbers."""
+    headings: list[list[str]] = []
+    for _, cells in reversed(rows):
+        fitted = _fitted(cells, width)
+        if fitted is None or (width > 2 and sum(bool(cell.strip()) for cell in fitted) < 2):
+            break
+        headings.insert(0, fitted)
+        if width == 2 and not axis_heading(fitted[0]) and len(headings) > 1:
+            headings.pop(0)
+            break
+    metadata = Metadata()
+    for _, cells in rows[: len(rows) - len(headings)]:
+        take_line(metadata, " ".join(cell.strip() for cell in cells if cell.strip()), list(cells))
+    return metadata, headings
+
+
+def _fitted(cells: list[str], width: int) -> list[str] | None:
+    """A row of headings with ``width`` cells: as it is, without its corner, or with units in cells of their own."""
+    cells = [cell.strip() for cell in cells]
+    if len(cells) == width:
+        return cells
+    if len(cells) == width - 1 and width > 2:
+        return ["", *cells]
+    if len(cells) == 2 * width and axis_heading(f"{cells[0]} ({cells[1]})"):
+        return [f"{name} ({unit})" if unit else name for name, unit in zip(cells[::2], cells[1::2], strict=True)]
+    if len(cells) > width:
+        # Headings that hold the delimiter themselves, such as "Wavelength, nm" or "Wavelength (nm)" between blanks
+        for n in range(len(cells) - width + 1, 1, -1):
+            joined = " ".join(cells[:n])
+            if axis_heading(joined) or axis_heading(", ".join(cells[:n])):
+                rest = cells[n:]
+                merged = [*rest[: width - 2], " ".join(rest[width - 2 :])]
+                return [joined if axis_heading(joined) else ", ".join(cells[:n]), *merged]
+    return None
+
+
+def _columns(data: Sequence[Row], headings: list[list[str]], dialect: Dialect) -> Layout | None:
+    """The layout with the axis in the first column, if that is possible."""
+    body = len(data)
+    while body and dialect.is_value(data[body - 1][1][0]):
+        body -= 1
+    if body == len(data):
+        return None
+    above = [cells for _, cells in data[:body]]
+    width = len(data[0][1])
+    layout = Layout("columns", width, data[body][0], [*headings, *above])
+    heading = next((row[0] for row in reversed(layout.headings) if axis_heading(row[0])), "")
+    layout.axis_text = heading
+    own_axes = [row for row in layout.headings if width >= 4 and width % 2 == 0
+                and all(axis_heading(cell) for cell in row[::2])]  # fmt: skip
+    if own_axes:
+        layout.orientation, layout.axis_text = "pairs", own_axes[-1][0]
+    return layout
+
+
+def _rows(data: Sequence[Row], headings: list[list[str]], dialect: Dialect) -> Layout | None:
+    """The layout with the axis in a heading row, if that is possible."""
+    above = [(data[0][0], row) for row in headings[-1:]]
+    for i, (_, cells) in enumerate([*above, data[0]]):
+        body = data if i < len(above) else data[1:]
+        found = [axis_cell(cell, dialect.decimal) for cell in cells]
+        start = len(found)
+        while start and found[start - 1] is not None:
+            start -= 1
+        run = [cell for cell in found[start:] if cell is not None]
+        # A number in front of the axis belongs to the columns of facts beside the spectra
+        while len(run) > _SHORTEST_AXIS and not _runs_one_way([position for position, _ in run]):
+            run, start = run[1:], start + 1
+        positions = [position for position, _ in run]
+        units = {unit for _, unit in run}
+        if len(run) < _SHORTEST_AXIS or len(units) > 1 or not _runs_one_way(positions) or not body:
+            continue
+        if _counts(positions) or (start and dialect.is_value(cells[0]) and i == len(above)):
+            continue
+        if not all(dialect.is_number(cell) for _, row in body for cell in row[start:]):
+            continue
+        text = units.pop() or next((cell for cell in cells[:start] if axis_heading(cell)), "")
+        return Layout("rows", len(cells), body[0][0], [cells], start, positions, text)
+    return None
+
+
+def _runs_one_way(positions: Sequence[float]) -> bool:
+    step = np.diff(positions)
+    return bool((step > 0).all() or (step < 0).all())
+
+
+def _counts(positions: Sequence[float]) -> bool:
+    """Whether numbers only count 0, 1, 2 or 1, 2, 3: a row number, no axis."""
+    return positions[0] in (0, 1) and all(b - a == 1 for a, b in pairwise(positions))
+
+
+def _choose(columns: Layout | None, rows: Layout | None, data: Sequence[Row], options: Options, file: str) -> Layout:
+    accepted = "give orientation='columns' (one spectrum a column) or orientation='rows' (one a row)"
+    if options.orientation is not None:
+        wanted = columns if options.orientation == "columns" else rows
+        if wanted is None:
+            where = "first column" if options.orientation == "columns" else "heading line"
+            raise ReadError(f"no axis was found in the {where}", path=file, line=data[0][0],
+                            accepted="an axis is a list of numbers in rising or falling order")  # fmt: skip
+        return wanted
+    if columns is not None and not columns.axis_text and _counts_down(data, columns):
+        if rows is not None:
+            return rows
+        raise ReadError("the first column only counts the rows and no line of headings is an axis", path=file,
+                        line=columns.first_line, accepted=accepted)  # fmt: skip
+    if columns is None and rows is None:
+        raise ReadError("neither the first column nor a line of headings is an axis", path=file, line=data[0][0],
+                        accepted="an axis is a list of numbers in rising or falling order")  # fmt: skip
+    if columns is None or rows is None:
+        return columns or rows  # type: ignore[return-value]
+    first = [float(cells[0].replace(",", ".")) for line, cells in data if line >= columns.first_line]
+    if rows.axis_text and not columns.axis_text:
+        return rows
+    if not _runs_one_way(first) and not columns.axis_text:
+        return rows
+    if columns.axis_text and _runs_one_way(first) and not _counts(first):
+        return columns
+    if len(first) <= 2 and len(rows.axis) >= 10 and rows.axis_start <= 1:
+        return rows
+    raise ReadError("both the first column and a line of headings could be the axis", path=file,
+                    line=rows.first_line, accepted=accepted)  # fmt: skip
+
+
+def _counts_down(data: Sequence[Row], columns: Layout) -> bool:
+    first = [float(cells[0].replace(",", ".")) for line, cells in data if line >= columns.first_line]
+    return len(first) > 1 and _counts(first)
+
+
+def label_row(headings: Sequence[Sequence[str]]) -> int | None:
+    """Which row of headings holds the names of the spectra: one that says so, else the first that holds texts."""
+    for i, row in enumerate(headings):
+        if row[0].strip().lower() in LABEL_WORDS:
+            return i
+    for i, row in enumerate(headings):
+        names = [ordinate_heading(cell)[0] for cell in row[1:]]
+        if any(names) and not all(_is_float(name) for name in names):
+            return i
+    # Names that are numbers, such as times: those beside the heading of the axis
+    for i, row in enumerate(headings):
+        if axis_heading(row[0]) and any(ordinate_heading(cell)[0] for cell in row[1:]):
+            return i
+    return None
+
+
+def _is_float(text: str) -> bool:
+    try:
+        float(text.replace(",", "."))
+    except ValueError:
+        return False
+    return True
