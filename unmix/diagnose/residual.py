@@ -10,9 +10,10 @@ from functools import lru_cache
 from typing import NamedTuple
 
 import numpy as np
+from numpy.typing import NDArray
 from scipy import fft
 
-from unmix.kernels import BoolArray, FloatArray, IntArray
+from unmix.kernels import FloatArray, IntArray
 from unmix.kernels.linalg import polynomial_terms
 
 #: chance of at least one band flagged in a spectrum whose model is right
@@ -29,21 +30,27 @@ MAX_BANDS = 8
 
 
 class Templates(NamedTuple):
-    """Gaussian bands of unit length in the frequency domain.
+    """Gaussian bands of unit length, each width on a grid of positions a third of the width apart.
 
     Attributes
     ----------
     widths : ndarray, shape (widths,)
-        Full widths at half height, in channels.
-    transform : ndarray, shape (widths, bins), complex
-        Conjugate transform of each centred template.
+        Full widths at half height, in channels: 3, 6, 12, ...
+    strides : list of int
+        Spacing of the positions of each width, in channels.
+    places : list of slice
+        Where each width's positions stand on the axis "places" that all widths share.
+    transform : list of ndarray, complex64
+        Conjugate transform of each centred template, cut where the template has no more power.
     shapes : list of ndarray
         The templates themselves, of odd length.
     n_channels, n_fft : int
     """
 
     widths: FloatArray
-    transform: FloatArray
+    strides: list[int]
+    places: list[slice]
+    transform: list[NDArray[np.complex64]]
     shapes: list[FloatArray]
     n_channels: int
     n_fft: int
@@ -74,20 +81,31 @@ def templates(n_channels: int) -> Templates:
     The narrowest is 3 channels wide, the widest an eighth of the range (and at most 128 channels).
     """
     widest = min(max(n_channels / 8.0, 3.0), 128.0)
-    widths = 3.0 * 2.0 ** np.arange(int(np.log2(widest / 3.0)) + 1)
+    count = int(np.log2(widest / 3.0)) + 1
+    widths = 3.0 * 2.0 ** np.arange(count)
+    strides = [2**i for i in range(count)]
     reach = [int(np.ceil(1.3 * w)) for w in widths]
-    n_fft = fft.next_fast_len(n_channels + 2 * max(reach), real=True)
-    shapes = []
-    rows = np.zeros((widths.size, n_fft))
-    for i, (w, h) in enumerate(zip(widths, reach, strict=True)):
+    # the shorter transforms of the coarser grids need a length that their stride divides
+    n_fft = strides[-1] * fft.next_fast_len(-(-(n_channels + 2 * max(reach)) // strides[-1]), real=True)
+    n_fft += n_fft % 2 * strides[-1]
+    places, shapes, transform = [], [], []
+    at = 0
+    for w, h, stride in zip(widths, reach, strides, strict=True):
         shape = np.exp(-4.0 * np.log(2.0) * (np.arange(-h, h + 1) / w) ** 2)
         shapes.append(shape / np.linalg.norm(shape))
-        rows[i, : h + 1], rows[i, n_fft - h :] = shapes[-1][h:], shapes[-1][:h]
-    return Templates(widths, np.conj(fft.rfft(rows, axis=1)), shapes, n_channels, n_fft)
+        row = np.zeros(n_fft)
+        row[: h + 1], row[n_fft - h :] = shapes[-1][h:], shapes[-1][:h]
+        transform.append((np.conj(fft.rfft(row))[: n_fft // stride // 2 + 1] / stride).astype(np.complex64))
+        size = -(-n_channels // stride)
+        places.append(slice(at, at + size))
+        at += size
+    return Templates(widths, strides, places, transform, shapes, n_channels, n_fft)
 
 
 def correlate(x: FloatArray, t: Templates) -> FloatArray:
-    """Inner product of every row with every template at every position.
+    """Inner product of every row with every template at every place.
+
+    Worked in single precision: a score needs three digits.
 
     Parameters
     ----------
@@ -95,70 +113,86 @@ def correlate(x: FloatArray, t: Templates) -> FloatArray:
 
     Returns
     -------
-    ndarray, shape (..., widths, channels)
+    ndarray, shape (..., places), float32
     """
-    spectrum = fft.rfft(x, n=t.n_fft, axis=-1)
-    product = fft.irfft(spectrum[..., None, :] * t.transform, n=t.n_fft, axis=-1)
-    inside: FloatArray = product[..., : t.n_channels]
-    return inside
+    spectrum = fft.rfft(x.astype(np.float32), n=t.n_fft, axis=-1)
+    out = np.empty((*x.shape[:-1], t.places[-1].stop), dtype=np.float32)
+    for place, stride, kernel in zip(t.places, t.strides, t.transform, strict=True):
+        size = t.n_fft // stride
+        product = fft.irfft(spectrum[..., : size // 2 + 1] * kernel, n=size, axis=-1)
+        out[..., place] = product[..., : place.stop - place.start]
+    return out
 
 
-def template_energy(used: BoolArray, t: Templates, lags: int) -> FloatArray:
-    """Energy of each template at each position over the used channels, by lag of the inverse covariance.
+def template_energy(weight: FloatArray, t: Templates, lags: int) -> FloatArray:
+    """Energy of each template at each place under channel weights, by lag of the inverse covariance.
+
+    Parameters
+    ----------
+    weight : ndarray, shape (channels,)
+        What data and design were multiplied by; zero on unused channels.
+    t : Templates
+    lags : int
 
     Returns
     -------
-    ndarray, shape (lags, widths, channels)
-        Entry d is the sum of g(s) g(s + d) over pairs of used channels of an unbroken run; off the main diagonal
-        it counts twice.
+    ndarray, shape (lags, places)
+        Entry d is the sum of g(s) w(s) g(s + d) w(s + d) over pairs of channels of an unbroken run; off the main
+        diagonal it counts twice.
     """
-    mask = used.astype(float)
-    spectrum_cache = []
+    used = weight != 0
+    out = np.empty((lags, t.places[-1].stop))
     for d in range(lags):
-        run = mask[: mask.size - d].copy()
-        for e in range(1, d + 1):
-            run *= mask[e : mask.size - d + e]
-        spectrum = fft.rfft(run, n=t.n_fft)
-        rows = np.empty((t.widths.size, t.n_channels))
-        for i, shape in enumerate(t.shapes):
-            h = shape.size // 2
+        pairs = weight[: weight.size - d] * weight[d:]
+        for e in range(1, d):
+            pairs = pairs * used[e : weight.size - d + e]
+        spectrum = fft.rfft(pairs, n=t.n_fft)
+        for place, stride, shape in zip(t.places, t.strides, t.shapes, strict=True):
             product = np.zeros(t.n_fft)
-            pair = shape[: shape.size - d] * shape[d:] if d < shape.size else np.zeros(1)
-            at = (np.arange(pair.size) - h) % t.n_fft
-            product[at] = pair
-            rows[i] = fft.irfft(spectrum * np.conj(fft.rfft(product)), n=t.n_fft)[: t.n_channels]
-        spectrum_cache.append(rows * (1.0 if d == 0 else 2.0))
-    return np.stack(spectrum_cache)
+            pair = shape[: max(shape.size - d, 0)] * shape[d:]
+            product[(np.arange(pair.size) - shape.size // 2) % t.n_fft] = pair
+            full = fft.irfft(spectrum * np.conj(fft.rfft(product)), n=t.n_fft)[: t.n_channels : stride]
+            out[d, place] = full if d == 0 else 2.0 * full
+    return out
 
 
-def denominators(energy: FloatArray, projected: FloatArray) -> FloatArray:
-    """||g - Hg|| at every width and position; NaN where the band hides in the design or outside the channels.
+def denominators(energy: FloatArray, projected: FloatArray, t: Templates) -> FloatArray:
+    """||g - Hg|| at every place; NaN where the band hides in the design or outside the channels.
 
     Parameters
     ----------
-    energy : ndarray, shape (..., widths, channels)
+    energy : ndarray, shape (..., places)
         ||g||^2 of the whitened templates.
-    projected : ndarray, shape (..., widths, channels)
+    projected : ndarray, shape (..., places)
         ||Q'g||^2.
+    t : Templates
     """
     left = energy - projected
-    full = np.median(energy, axis=-1, keepdims=True)
-    outside = left <= _HIDDEN * np.maximum(energy, full)
+    full = np.empty(energy.shape)
+    for place in t.places:
+        part = energy[..., place]
+        full[..., place] = np.maximum(part, np.median(part, axis=-1, keepdims=True))
+    outside = left <= _HIDDEN * full
     return np.where(outside, np.nan, np.sqrt(np.where(outside, 1.0, left)))
 
 
-def largest(score: FloatArray) -> tuple[FloatArray, IntArray, IntArray]:
-    """The signed score that is largest in size for each spectrum, with its width and channel index.
+def largest(score: FloatArray) -> tuple[FloatArray, IntArray]:
+    """The signed score that is largest in size for each spectrum, and its place.
 
     Parameters
     ----------
-    score : ndarray, shape (spectra, widths, channels)
+    score : ndarray, shape (spectra, places)
         NaN is passed over; a spectrum without any score gets 0.
     """
-    flat = np.nan_to_num(score).reshape(score.shape[0], -1)
-    best = np.abs(flat).argmax(axis=1)
-    width, channel = np.divmod(best, score.shape[2])
-    return flat[np.arange(flat.shape[0]), best], width, channel
+    known = np.nan_to_num(score)
+    best: IntArray = np.abs(known).argmax(axis=1)
+    return known[np.arange(known.shape[0]), best], best
+
+
+def band_at(place: int, t: Templates) -> tuple[int, int]:
+    """Index of the width and channel of a place."""
+    w = next(i for i, s in enumerate(t.places) if place < s.stop)
+    return w, min((place - t.places[w].start) * t.strides[w], t.n_channels - 1)
 
 
 @lru_cache(maxsize=128)
@@ -176,10 +210,9 @@ def null_limit(n_channels: int, n_terms: int, false_alarm: float = FALSE_ALARM, 
     rng = np.random.default_rng(seed)
     t = templates(n_channels)
     q = np.linalg.qr(polynomial_terms(np.linspace(-1.0, 1.0, n_channels), n_terms - 1))[0] if n_terms else None
-    used = np.ones(n_channels, dtype=bool)
-    energy = template_energy(used, t, 1)[0]
+    energy = template_energy(np.ones(n_channels), t, 1)[0]
     projected = np.zeros_like(energy) if q is None else np.sum(correlate(q.T, t) ** 2, axis=0)
-    below = denominators(energy, projected)
+    below = denominators(energy, projected, t)
     found = []
     block = max(1, min(200, 2_000_000 // (below.size + 1)))
     for _ in range(-(-600 // block)):
@@ -187,7 +220,7 @@ def null_limit(n_channels: int, n_terms: int, false_alarm: float = FALSE_ALARM, 
         if q is not None:
             r -= (r @ q) @ q.T
         sigma = np.sqrt(np.sum(r**2, axis=1) / (n_channels - n_terms))
-        z = correlate(r, t) / below / sigma[:, None, None]
+        z = correlate(r, t) / below / sigma[:, None]
         found.append(np.abs(largest(z)[0]))
     top = np.concatenate(found)
     beta = top.std(ddof=1) * np.sqrt(6.0) / np.pi
@@ -195,33 +228,35 @@ def null_limit(n_channels: int, n_terms: int, false_alarm: float = FALSE_ALARM, 
 
 
 class FilterPair:
-    """Whitening filters of some spectra on rows of channels, and their transposes.
+    """Weights and whitening filters of some spectra on rows of channels, and their transposes.
 
     Parameters
     ----------
     coefficients : ndarray, shape (spectra, order + 1)
         Of the prediction error filters, 1 first.
-    used : ndarray, shape (channels,), bool
-        Unused channels come out as zero.
+    weight : ndarray, shape (channels,)
+        What data and design were multiplied by before the filter; zero on unused channels.
     """
 
-    def __init__(self, coefficients: FloatArray, used: BoolArray) -> None:
+    def __init__(self, coefficients: FloatArray, weight: FloatArray) -> None:
         self.coefficients = coefficients[:, None, :]
-        self.used = used
+        self.weight = weight
+        self._used = weight != 0
 
     def forward(self, x: FloatArray) -> FloatArray:
-        """Filter rows, shape (spectra or 1, rows, channels)."""
-        out = x * self.coefficients[..., :1]
+        """Weigh and filter rows, shape (spectra or 1, rows, channels); unused channels come out as zero."""
+        weighed = x * self.weight
+        out = weighed * self.coefficients[..., :1]
         for j in range(1, self.coefficients.shape[-1]):
-            out[..., j:] += self.coefficients[..., j : j + 1] * x[..., :-j]
-        return np.where(self.used, out, 0.0)
+            out[..., j:] += self.coefficients[..., j : j + 1] * weighed[..., :-j]
+        return np.where(self._used, out, 0.0)
 
     def transpose(self, x: FloatArray) -> FloatArray:
-        """The filter run backwards over rows, shape (spectra or 1, rows, channels)."""
+        """Filter rows backwards, then weigh them, shape (spectra or 1, rows, channels)."""
         out = x * self.coefficients[..., :1]
         for j in range(1, self.coefficients.shape[-1]):
             out[..., :-j] += self.coefficients[..., j : j + 1] * x[..., j:]
-        return np.where(self.used, out, 0.0)
+        return out * self.weight
 
 
 class Whitened(NamedTuple):
@@ -237,7 +272,7 @@ class Whitened(NamedTuple):
         Fitted terms = factor @ (basis @ whitened data).
     filters : FilterPair
         Of this spectrum alone.
-    energy : ndarray, shape (widths, channels)
+    energy : ndarray, shape (places,)
         ||Wg||^2 of the templates.
     freedom : float
         Degrees of freedom of the residual.
@@ -270,10 +305,10 @@ def unexplained_bands(fit: Whitened, t: Templates, limit: float) -> Bands:
         if sigma == 0:
             break
         along_templates = correlate(fit.filters.transpose(residual[None, None])[0, 0], t)
-        score, width, channel = largest((along_templates / denominators(fit.energy, projected) / sigma)[None])
+        score, place = largest((along_templates / denominators(fit.energy, projected, t) / sigma)[None])
         if abs(score[0]) <= limit:
             break
-        w, c = int(width[0]), int(channel[0])
+        w, c = band_at(int(place[0]), t)
         whitened = fit.filters.forward(placed(t, w, c)[None, None])[0, 0]
         along = fit.basis @ whitened
         rest = whitened - along @ fit.basis

@@ -63,7 +63,7 @@ class Design(NamedTuple):
     """What all spectra of one pattern of channels share."""
 
     a: FloatArray
-    used: BoolArray
+    weight: FloatArray
     reduced: Reduced
     factor: FloatArray
     nonnegative: bool
@@ -73,22 +73,27 @@ class Design(NamedTuple):
         """Channels less fitted terms."""
         return int(self.used.sum()) - self.reduced.rank
 
+    @property
+    def used(self) -> BoolArray:
+        """Channels that count."""
+        return np.asarray(self.weight != 0)
 
-def make_design(signal: FloatArray, free: FloatArray, used: BoolArray, *, nonnegative: bool) -> Design:
-    """Reduce the design of one pattern of channels.
+
+def make_design(signal: FloatArray, free: FloatArray, weight: FloatArray, *, nonnegative: bool) -> Design:
+    """Reduce the weighed design of one pattern of channels.
 
     Parameters
     ----------
     signal : ndarray, shape (channels, components)
     free : ndarray, shape (channels, baseline terms)
-    used : ndarray, shape (channels,), bool
-        Rows that count; the others are taken as zero.
+    weight : ndarray, shape (channels,)
+        What each channel is multiplied by; zero for those that do not count.
     nonnegative : bool
         Whether the components are bounded at zero.
     """
-    a = np.where(used[:, None], np.hstack([free, signal]), 0.0)
+    a = np.hstack([free, signal]) * weight[:, None]
     reduced = reduce_design(a[:, free.shape[1] :], a[:, : free.shape[1]])
-    return Design(a, used, reduced, inverse_factor(reduced), nonnegative)
+    return Design(a, weight, reduced, inverse_factor(reduced), nonnegative)
 
 
 def independent_stride(y: FloatArray, design: Design) -> IntArray:
@@ -97,7 +102,7 @@ def independent_stride(y: FloatArray, design: Design) -> IntArray:
     Parameters
     ----------
     y : ndarray, shape (spectra, channels)
-        Zero on unused channels.
+        Weighed as the design; zero on unused channels.
     """
     power = block_power(_ordinary_residual(y, design), design.used)
     return np.ones(y.shape[0], dtype=int) if power is None else interpolation_stride(power)
@@ -115,7 +120,7 @@ def fit(y: FloatArray, design: Design, *, correlated: bool = True) -> list[tuple
     Parameters
     ----------
     y : ndarray, shape (spectra, channels)
-        Zero on unused channels.
+        Weighed as the design; zero on unused channels.
     design : Design
     correlated : bool
         Whether to look for correlation between neighbouring channels.

@@ -17,7 +17,8 @@ from unmix.kernels import FloatArray
 from unmix.kernels.linalg import polynomial_terms
 from unmix.prepare.axis import common_axis, select_regions
 from unmix.provenance import provenance
-from unmix.solve.analysis import Answer, Progress, Settings, analyse
+from unmix.solve.analysis import Progress, analyse
+from unmix.solve.answer import Answer, Settings
 from unmix.solve.options import check_baseline, check_level, check_noise
 from unmix.solve.paths import path_of, scale_to_path
 from unmix.solve.result import assemble
@@ -168,10 +169,11 @@ class KnownSpectra(MultiOutputMixin, RegressorMixin, BaseEstimator):
         spectra = np.asarray(X, dtype=np.float64)
         counts = np.isfinite(spectra) if used is None else np.asarray(used, dtype=bool) & np.isfinite(spectra)
         counts = counts & np.isfinite(self.pure_).all(axis=0)
-        noise = None if self.noise is None else np.asarray(self.noise, dtype=float)
-        settings = Settings(self.level, self.nonnegative, noise)
+        noise = 1.0 if self.noise is None else np.asarray(self.noise, dtype=float)
+        weight = np.where(counts, 1.0 / noise, 0.0)
+        settings = Settings(self.level, self.nonnegative, known_noise=self.noise is not None)
         relative = np.broadcast_to(np.asarray(pure_uncertainty, dtype=float), (self.pure_.shape[0],))
-        return analyse(spectra, counts, self.pure_.T, self._free, relative, settings, progress)
+        return analyse(spectra, weight, self.pure_.T, self._free, relative, settings, progress)
 
     def _check(self) -> None:
         check_baseline(self.baseline)

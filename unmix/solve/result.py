@@ -11,7 +11,8 @@ from unmix.diagnose.saturation import saturated
 from unmix.diagnose.verdict import Band, Evidence, Words, judge
 from unmix.kernels import BoolArray, FloatArray
 from unmix.kernels.linalg import polynomial_terms
-from unmix.solve.analysis import Answer, Progress
+from unmix.solve.analysis import Progress
+from unmix.solve.answer import Answer
 from unmix.solve.paths import Paths
 from unmix.spectra import rows_of, spectral_dim
 from unmix.units import SPECTRAL_UNITS

@@ -1,0 +1,64 @@
+"""The arrays of an answer, and the settings it was found with."""
+
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+
+from unmix.diagnose.residual import Bands
+from unmix.kernels import FloatArray
+
+
+@dataclass(frozen=True)
+class Settings:
+    """Options of the analysis.
+
+    ``known_noise`` says that the weights are one over known standard deviations; otherwise they are relative, and the
+    level and correlation of the noise are found from each residual.
+    """
+
+    level: float = 0.95
+    nonnegative: bool = True
+    known_noise: bool = False
+
+
+#: arrays of an answer by shape: amounts (spectra, components), curves (spectra, channels), figures (spectra,)
+AMOUNTS = ("concentration", "standard_uncertainty", "lower", "upper", "critical_level", "detection_limit",
+           "quantification_limit", "misfit_harm", "negative")  # fmt: skip
+CURVES = ("fitted", "baseline")
+FIGURES = ("noise_level", "noise_correlation_length", "freedom", "misfit_z", "misfit_limit")
+
+
+@dataclass
+class Answer:
+    """Arrays of the answer, one row a spectrum, NaN where a spectrum could not be answered.
+
+    Shapes: (spectra, components) for the amounts, (spectra, channels) for curves, (spectra,) for the rest.
+    Amounts are per unit path; ``bands`` holds positions and widths in channels.
+    """
+
+    concentration: FloatArray
+    standard_uncertainty: FloatArray
+    lower: FloatArray
+    upper: FloatArray
+    critical_level: FloatArray
+    detection_limit: FloatArray
+    quantification_limit: FloatArray
+    misfit_harm: FloatArray
+    negative: FloatArray
+    fitted: FloatArray
+    baseline: FloatArray
+    noise_level: FloatArray
+    noise_correlation_length: FloatArray
+    freedom: FloatArray
+    misfit_z: FloatArray
+    misfit_limit: FloatArray
+    bands: list[Bands | None]
+    groups: list[list[tuple[float, list[int]]]]
+
+    @classmethod
+    def empty(cls, n: int, k: int, p: int) -> "Answer":
+        """All NaN, no bands."""
+        shapes = dict.fromkeys(AMOUNTS, (n, k)) | dict.fromkeys(CURVES, (n, p)) | dict.fromkeys(FIGURES, (n,))
+        arrays: dict[str, Any] = {name: np.full(shape, np.nan) for name, shape in shapes.items()}
+        return cls(**arrays, bands=[None] * n, groups=[[] for _ in range(n)])
