@@ -72,19 +72,31 @@ Per = Annotated[
     typer.Option(
         "--per",
         metavar="UNIT",
-        help="Unit amount of the pure spectra, such as g/L, where the files do not say it.",
+        help="Unit amount of the pure spectra, such as g/L, if unsaid.",
     ),
 ]
 Quantity = Annotated[
     str | None,
     typer.Option(
-        "--quantity", metavar="WORD", help="absorbance, transmittance, ... where the files do not say it."
+        "--quantity", metavar="WORD", help="What the samples' numbers are (absorbance, %T), if unsaid."
     ),
 ]
 Unit = Annotated[
     str | None,
+    typer.Option("--unit", metavar="UNIT", help="Axis unit of the samples (cm-1, nm), if unsaid."),
+]
+PureQuantity = Annotated[
+    str | None,
+    typer.Option("--pure-quantity", metavar="WORD", help="What the pure spectra's numbers are, if unsaid."),
+]
+PureUnit = Annotated[
+    str | None,
+    typer.Option("--pure-unit", metavar="UNIT", help="Axis unit of the pure spectra, if unsaid."),
+]
+PathLength = Annotated[
+    str | None,
     typer.Option(
-        "--unit", metavar="UNIT", help="Axis unit, such as cm-1 or nm, where the files do not say it."
+        "--path-length", metavar="LENGTH", help="Path length of all samples, for example '25 um' or '1 cm'."
     ),
 ]
 

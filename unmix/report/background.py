@@ -5,10 +5,10 @@ from typing import Any
 
 import numpy as np
 
-from unmix.report.details import badge
+from unmix.report.details import badge, sentence
 from unmix.report.markup import Markup, element, name_of, shown
 from unmix.report.numbers import significant
-from unmix.report.view import Result
+from unmix.report.view import Result, refused_of
 from unmix.report.words import HARDLY_APART, OVERLAPS, apartness, confused_pairs
 
 
@@ -16,14 +16,17 @@ def _section(identity: str, title: str, *parts: Any) -> Markup:
     return element("section", element("h2", title, id=identity), parts, aria_labelledby=identity)
 
 
-def _table(caption: str, titles: Sequence[str], rows: Sequence[Sequence[Any]]) -> Markup:
-    """A table whose first column names the rows and whose others are numbers, texts where a cell is Markup."""
-    head = [element("th", title, scope="col", class_="number" if k else "") for k, title in enumerate(titles)]
+def _table(caption: str, titles: Sequence[str], kinds: str, rows: Sequence[Sequence[Any]]) -> Markup:
+    """A table whose first column names its rows; ``kinds`` has a letter a column, n for numbers, t for texts."""
+    classes = ["number" if kind == "n" else "" for kind in kinds]
+    head = [
+        element("th", title, scope="col", class_=kind) for title, kind in zip(titles, classes, strict=True)
+    ]
     body = [
         element(
             "tr",
-            element("th", row[0], scope="row"),
-            [element("td", cell, class_="" if isinstance(cell, Markup) else "number") for cell in row[1:]],
+            element("th", row[0], scope="row", class_=classes[0]),
+            [element("td", cell, class_=kind) for cell, kind in zip(row[1:], classes[1:], strict=True)],
         )
         for row in rows
     ]
@@ -71,7 +74,7 @@ def _conditioning_of(view: Result, *, several: bool) -> list[Markup]:
     rows = [
         [
             name_of(name),
-            element("span", apartness(inflation[j])),
+            apartness(inflation[j]),
             significant(inflation[j], 3),
             f"{own[j]:.1%}" if np.isfinite(own[j]) else significant(own[j]),
             name_of(confused[j] or "\N{EN DASH}"),
@@ -90,7 +93,10 @@ def _conditioning_of(view: Result, *, several: bool) -> list[Markup]:
     if "condition_index" in view.data and view.data["condition_index"].ndim == 0:
         largest = float(view.data["condition_index"])
         parts.append(element("p", f"Largest condition index {significant(largest)}."))
-    return [*parts, _table(f"Overlap of the pure spectra {where}".strip(), titles, rows)]
+    return [
+        *parts,
+        _table(f"Overlap of the pure spectra {where}".strip(), titles, "ttnnt" + "n" * limited, rows),
+    ]
 
 
 def _range(view: Result) -> str:
@@ -100,23 +106,32 @@ def _range(view: Result) -> str:
     return f"{low} to {high} {view.axis_unit}, {view.axis.size} channels"
 
 
-def design(view: Result) -> list[Markup]:
-    """What only ``conditioning`` gives: the verdict, the angles between pure spectra, and where variance mixes."""
-    verdict, reason = (
-        str(view.data[name].item()) if name in view.data else "" for name in ("verdict", "reason")
-    )
-    said = element("p", badge(verdict), " ", shown(reason[:1].upper() + reason[1:]), class_="lead")
-    parts = [_section("trust", "Can this mixture be measured at all?", said) if verdict else Markup()]
-    parts.append(conditioning([view]) or Markup())
+def measurable(view: Result) -> Markup | None:
+    """The verdict of ``conditioning`` with its reason."""
+    if "verdict" not in view.data:
+        return None
+    reason = str(view.data["reason"].item()) if "reason" in view.data else ""
+    told = sentence(reason) if reason else None
+    said = element("p", badge(str(view.data["verdict"].item())), " ", told, class_="lead")
+    return _section("trust", "Can this mixture be measured at all?", said)
+
+
+def alikeness(view: Result) -> list[Markup]:
+    """The angles between pure spectra, and the directions in which variance mixes."""
+    parts = []
     names = [name_of(name) for name in view.components]
     if "spectral_angle" in view.data:
         angles = view.data["spectral_angle"].values
         rows = [
-            [names[i], *(_angle(angles[i, j]) if i != j else element("span", "") for j in range(len(names)))]
+            [names[i], *(_angle(angles[i, j]) if i != j else "" for j in range(len(names)))]
             for i in range(len(names))
         ]
         text = "Angle between two pure spectra, degrees; 90 is fully apart, below 10 is nearly alike"
-        parts.append(_section("angles", "How alike are they?", _table(text, ["", *names], rows)))
+        parts.append(
+            _section(
+                "angles", "How alike are they?", _table(text, ["", *names], "t" + "n" * len(names), rows)
+            )
+        )
     if "variance_proportion" in view.data and "condition_index" in view.data:
         shares = view.data["variance_proportion"].transpose("term", "component").values
         index = view.data["condition_index"].values
@@ -129,7 +144,11 @@ def design(view: Result) -> list[Markup]:
             "components that cannot be told apart"
         )
         parts.append(
-            _section("shares", "Which directions are weak?", _table(text, ["Condition index", *names], weak))
+            _section(
+                "shares",
+                "Which directions are weak?",
+                _table(text, ["Condition index", *names], "n" * (len(names) + 1), weak),
+            )
         )
     return parts
 
@@ -141,14 +160,11 @@ def _angle(angle: float) -> Markup:
 
 def refusals(views: Sequence[Result]) -> Markup | None:
     """Files of the run that could not be used, with the reason."""
-    found = {}
-    for view in views:
-        entries = view.entries("refused")
-        found.update(entries if isinstance(entries, dict) else {})
+    found = refused_of([view.data for view in views])
     if not found:
         return None
-    rows = [[name_of(file), element("span", shown(reason))] for file, reason in found.items()]
-    table = _table(f"{len(found)} not answered", ["File", "Reason"], rows)
+    rows = [[name_of(file), shown(reason)] for file, reason in found.items()]
+    table = _table(f"{len(found)} not answered", ["File", "Reason"], "tt", rows)
     return _section("refused", "Files that could not be used", table)
 
 
@@ -196,8 +212,10 @@ def provenance(views: Sequence[Result]) -> Markup:
     digests = _digests(views)
     if digests:
         rows = [[name_of(file), element("code", digest)] for file, digest in digests.items()]
-        listing = _table("SHA-256 of every file that went in", ["File", "Digest"], rows)
-        parts.append(element("details", element("summary", f"Input files ({len(digests)})"), listing))
+        listing = _table("SHA-256 of every file that went in", ["File", "Digest"], "tt", rows)
+        parts.append(
+            element("details", element("summary", f"Input files ({len(digests)})"), listing, class_="files")
+        )
     return _section("provenance", "How it came about", parts)
 
 

@@ -13,6 +13,13 @@ from unmix.report.words import advice, curve_summary
 #: a sign before each verdict, so that colour is never the only difference
 SIGNS = {"supported": "\N{HEAVY CHECK MARK}", "doubtful": "?", "unsupported": "\N{MULTIPLICATION X}"}
 
+#: how to read the figure of a sample
+GUIDE = (
+    "Each figure shows, from above: measured (broad) and fitted (thin); what is left over, on a band of two standard "
+    "deviations of the noise; what each component adds. Orange marks what no component explains. Drag to zoom, "
+    "double-click to go back, click an entry of a legend to hide its curve."
+)
+
 
 def badge(verdict: str) -> Markup:
     """A verdict as a small label with sign, word and colour."""
@@ -50,7 +57,8 @@ def samples(views: Sequence[Composition]) -> Markup:
     )
     parts = [_sample(view, number, i, first=k == 0) for k, (view, number, i) in enumerate(listed)]
     heading = element("h2", "Sample by sample", id="samples")
-    return element("section", heading, tools, parts, aria_labelledby="samples")
+    guide = element("p", GUIDE, class_="small")
+    return element("section", heading, guide, tools, parts, aria_labelledby="samples")
 
 
 def _sample(view: Composition, number: int, sample: int, *, first: bool) -> Markup:
@@ -63,7 +71,7 @@ def _sample(view: Composition, number: int, sample: int, *, first: bool) -> Mark
     )
     verdict = element(
         "div",
-        element("p", element("strong", "Why: "), _sentence(view.reasons[sample])),
+        element("p", element("strong", "Why: "), sentence(view.reasons[sample])),
         element("p", element("strong", "Next: "), advice(view, sample)),
         class_=f"verdict {view.verdicts[sample]}",
     )
@@ -72,10 +80,7 @@ def _sample(view: Composition, number: int, sample: int, *, first: bool) -> Mark
         "figure",
         element("div", "", class_="plot", data_result=str(number), data_sample=str(sample), role="img",
                 aria_label=curve_summary(view, sample)),
-        element("figcaption", "Above: measured (broad) and fitted (thin). Middle: what is left over, with a band "
-                "of two standard deviations of the noise. Below: what each component adds. Orange: not "
-                "explained by any component. Drag to zoom, double-click to go back, click a legend entry "
-                "to hide a curve. ", element("button", "Copy curves", type="button", class_="copy-curves")),
+        element("button", "Copy curves", type="button", class_="copy-curves"),
     ) if drawn else None  # fmt: skip
     grid = element("div", element("div", _composition_table(view, sample), class_="scroll"),
                    element("div", verdict, _facts(view, sample)), class_="pair")  # fmt: skip
@@ -83,7 +88,8 @@ def _sample(view: Composition, number: int, sample: int, *, first: bool) -> Mark
                    id=f"s{number}-{sample}", class_="sample", open=first)  # fmt: skip
 
 
-def _sentence(text: str) -> str:
+def sentence(text: str) -> str:
+    """A reason as a sentence of its own."""
     cut = text[:1].upper() + text[1:] if text else "No reason is given."
     return cut if cut.endswith((".", "!", "?")) else f"{cut}."
 

@@ -69,8 +69,9 @@ def overview(views: Sequence[Composition]) -> Markup:
 
 
 def _heading(title: Markup | str, kind: str, unit: str = "") -> Markup:
-    button = element("button", title, element("span", unit, class_="unit") if unit else None, type="button")
-    return element("th", button, scope="col", class_=kind, data_kind=kind)
+    button = element("button", title, type="button")
+    below = element("span", unit, class_="unit") if unit else None
+    return element("th", button, below, scope="col", class_=kind, data_kind=kind)
 
 
 def _overview_row(view: Composition, number: int, sample: int, names: Sequence[str], unit: str) -> Markup:

@@ -144,7 +144,7 @@ def _design_parts(designs: Sequence[Result]) -> tuple[str, str, list[Any], dict[
     main: list[Any] = []
     figures = []
     for view in designs:
-        main += background.design(view)
+        main += [background.measurable(view), background.conditioning([view])]
         if all(name in view.data for name in ("pure_signal", "net_signal")):
             figures.append(_packed_figure(view))
             label = (
@@ -154,6 +154,7 @@ def _design_parts(designs: Sequence[Result]) -> tuple[str, str, list[Any], dict[
                 "div", "", class_="plot", data_figure=str(len(figures) - 1), role="img", aria_label=label
             )
             main.append(element("figure", plot, element("figcaption", f"{label}.")))
+        main += background.alikeness(view)
     main += [background.caution(designs), background.remarks(designs), background.provenance(designs)]
     said = f"{len(designs[0].components)} components"
     made = designs[0].text("created")[:10]

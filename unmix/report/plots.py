@@ -127,7 +127,7 @@ def _spectral_axis(view: Result, **more: Any) -> dict[str, Any]:
 def fit_layout(view: Composition, sample: int) -> dict[str, Any]:
     """Axes, legends and marks of the figure of one sample."""
     unit = view.unit("measured")
-    title = "Absorbance" + (f" ({unit})" if unit else "")
+    title = "Absorbance" if unit in ("", "absorbance") else f"Signal ({unit})"
     zero = {"zeroline": True, "zerolinecolor": "rgba(128,128,128,0.6)"}
     legend = {
         "x": 1.01,
@@ -137,8 +137,8 @@ def fit_layout(view: Composition, sample: int) -> dict[str, Any]:
         "bgcolor": "rgba(0,0,0,0)",
     }
     return {
-        "height": 720,
-        "margin": {"l": 70, "r": 20, "t": 16, "b": 52},
+        "height": 740,
+        "margin": {"l": 70, "r": 20, "t": 36, "b": 52},
         "hovermode": "x unified",
         "xaxis": _spectral_axis(view, anchor="y3"),
         "yaxis": _axis(title, domain=[0.64, 1.0]),
@@ -220,8 +220,8 @@ def signal_layout(view: Result) -> dict[str, Any]:
     unit = view.unit("pure_signal")
     behind = f" ({unit})" if unit else ""
     return {
-        "height": 520,
-        "margin": {"l": 70, "r": 20, "t": 16, "b": 52},
+        "height": 540,
+        "margin": {"l": 70, "r": 20, "t": 36, "b": 52},
         "hovermode": "x unified",
         "xaxis": _spectral_axis(view, anchor="y2"),
         "yaxis": _axis(f"Pure spectrum{behind}", domain=[0.54, 1.0]),

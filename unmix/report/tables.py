@@ -16,7 +16,7 @@ import xarray as xr
 
 from unmix.errors import WriteError
 from unmix.files import harmless_cell, whole_file
-from unmix.report.view import Composition, Result, results_of
+from unmix.report.view import Composition, Result, refused_of, results_of
 
 #: what a cell can hold; None where something is not known
 Value = str | float | bool | None
@@ -32,7 +32,7 @@ DESIGN_COLUMNS = (
     "component", "variance_inflation", "selectivity", "detection_limit", "unit", "confused_with", "verdict",
     "reason",
 )  # fmt: skip
-_ENTRIES = ("settings", "versions", "inputs", "assumptions", "notes")
+_ENTRIES = ("settings", "versions", "inputs", "assumptions", "notes", "refused")
 
 
 def _number(value: float) -> float | None:
@@ -130,16 +130,13 @@ def _cell(value: Value) -> str:
     return harmless_cell(value) if isinstance(value, str) else repr(value)
 
 
-def document(
-    result: xr.Dataset | Sequence[xr.Dataset], *, refused: Mapping[str, str] | None = None
-) -> dict[str, Any]:
+def document(result: xr.Dataset | Sequence[xr.Dataset]) -> dict[str, Any]:
     """Everything but the curves as one structure for JSON: samples, amounts, verdicts, provenance, caution.
 
     Parameters
     ----------
     result : Dataset or sequence of Dataset
-    refused : mapping, optional
-        Files that could not be used, with the reason.
+        Files that could not be used stand in ``attrs["refused"]``, a JSON object of file and reason.
 
     Returns
     -------
@@ -155,7 +152,7 @@ def document(
     return {
         "kind": several[0].attrs["kind"],
         "rows": rows(several),
-        "refused": [{"file": file, "reason": reason} for file, reason in (refused or {}).items()],
+        "refused": [{"file": file, "reason": reason} for file, reason in refused_of(several).items()],
         "provenance": attributes,
     }
 
@@ -209,16 +206,10 @@ def _sheet_cell(value: Value) -> Value:
     return harmless_cell("".join(char for char in value if char.isprintable()))[:32_767]
 
 
-def write_json(
-    result: xr.Dataset | Sequence[xr.Dataset],
-    path: Path,
-    *,
-    refused: Mapping[str, str] | None = None,
-    overwrite: bool = False,
-) -> None:
+def write_json(result: xr.Dataset | Sequence[xr.Dataset], path: Path, *, overwrite: bool = False) -> None:
     """Write :func:`document` as JSON."""
     with whole_file(path, overwrite) as beside:
-        beside.write_text(json_text(document(result, refused=refused)), encoding="utf-8")
+        beside.write_text(json_text(document(result)), encoding="utf-8")
 
 
 def write_netcdf(result: xr.Dataset | Sequence[xr.Dataset], path: Path, *, overwrite: bool = False) -> None:

@@ -54,6 +54,15 @@ def results_of(result: Any) -> list[xr.Dataset]:
     return several
 
 
+def refused_of(results: Sequence[xr.Dataset]) -> dict[str, str]:
+    """Files that could not be used, with the reason, from ``attrs["refused"]`` (a JSON object) of all results."""
+    found: dict[str, str] = {}
+    for one in results:
+        entries = Result(one).entries("refused")
+        found.update({str(k): str(v) for k, v in entries.items()} if isinstance(entries, dict) else {})
+    return found
+
+
 class Result:
     """What every kind of result has: components, the spectral axis, and texts in its attributes.
 

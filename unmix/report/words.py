@@ -14,8 +14,8 @@ OVERLAPS, HARDLY_APART = 10.0, 100.0
 #: what each verdict allows
 USE = {
     "supported": "use the values with their intervals",
-    "doubtful": "look at the reason before you use a value",
-    "unsupported": "do not use these values",
+    "doubtful": "read the reason before using a value",
+    "unsupported": "do not use the values",
 }
 
 

@@ -56,7 +56,7 @@
     toImageButtonOptions: { scale: 2 },
   };
   const gaps = values => values.map(value => Number.isFinite(value) ? value : null);
-  const INK = "#3b4654";
+  const INK = "#3b4654", PALE = "#9fb4c7"; // as in plots.py
   const themed = (figure, width, light) => {
     const ink = light ? "#1b2430" : named("--ink");
     const narrow = width < 640;
@@ -69,6 +69,7 @@
     const traces = figure.data.map(trace => {
       const copy = Object.assign({}, trace, { line: Object.assign({}, trace.line) });
       if (copy.line.color === INK) copy.line.color = ink;
+      if (copy.line.color === PALE && !light) copy.line.color = named("--pale");
       if (narrow) delete copy.legend;
       return copy;
     });
@@ -95,7 +96,7 @@
     return { data: traces, layout };
   };
   const draw = (plot, light = false) => {
-    const width = light ? 690 : plot.clientWidth || plot.parentElement.clientWidth;
+    const width = light ? 650 : plot.clientWidth || plot.parentElement.clientWidth;
     if (!plot.kept) plot.kept = figureOf(plot);
     const [traces, layout] = themed(plot.kept, width, light);
     Plotly.react(plot, traces, layout, config);
@@ -115,6 +116,7 @@
     const open = samples.filter(sample => sample.open).length;
     const note = document.getElementById("printed");
     if (note) note.textContent = open < samples.length ? `${open} of ${samples.length} samples were open and are printed.` : "";
+    all("details.files").forEach(files => { files.open = true; });
     redraw(true);
   });
   addEventListener("afterprint", () => { document.documentElement.classList.remove("printing"); redraw(false); });

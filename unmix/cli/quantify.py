@@ -1,0 +1,72 @@
+"""The command ``quantify``: samples and pure spectra from files, amounts with verdicts out."""
+
+from typing import Annotated, Any
+
+import typer
+
+from unmix.cli import options
+from unmix.cli.output import OutputFiles, Status, errors_as_sentences, status_of
+
+EXAMPLE = """
+Example:
+  unmix quantify drums/*.jdx --pure pure/ --baseline 1 --report drums.html
+  unmix quantify run.csv --pure pure/ --regions 1650-1800 --path-length "25 um"
+"""
+
+
+def command(
+    samples: options.Sources,
+    pure: options.Pure,
+    baseline: options.Baseline = "1",
+    regions: options.Regions = None,
+    level: options.Level = 0.95,
+    path_length: options.PathLength = None,
+    noise: options.Noise = None,
+    no_nonnegative: Annotated[
+        bool,
+        typer.Option("--no-nonnegative", help="Let amounts become negative, as plain least squares does."),
+    ] = False,
+    unit: options.Unit = None,
+    quantity: options.Quantity = None,
+    pure_unit: options.PureUnit = None,
+    pure_quantity: options.PureQuantity = None,
+    per: options.Per = None,
+    csv: options.Csv = None,
+    xlsx: options.Xlsx = None,
+    json: options.Json = None,
+    netcdf: options.NetCdf = None,
+    report: options.Report = None,
+    overwrite: options.Overwrite = False,
+    quiet: options.Quiet = False,
+    debug: options.Debug = False,
+) -> None:
+    """Say how much of each known component is in each sample, how sure, and whether something is missing.
+
+    The samples are read, brought onto the channels of the pure spectra and fitted with these and a baseline. Every
+    amount comes with its interval, every sample with a verdict and the reason for it. Exit status: 0 when all
+    answers are supported, 1 when one is doubtful or unsupported, 2 when something could not be used.
+    """
+    with errors_as_sentences(debug) as shown:
+        files = OutputFiles(csv, xlsx, json, netcdf, report, overwrite)
+        files.check()
+        settings: dict[str, Any] = {
+            "baseline": options.baseline_from(baseline),
+            "regions": options.regions_from(regions),
+            "level": level,
+            "path_length": path_length,
+            "noise": noise,
+            "nonnegative": not no_nonnegative,
+        }
+        from unmix.cli.samples import quantify_files, read_pure  # noqa: PLC0415 - heavy
+        from unmix.cli.show import print_amounts, print_refused, remarks_of  # noqa: PLC0415 - heavy
+
+        known = read_pure(pure, unit=pure_unit, quantity=pure_quantity, per=per)
+        run = quantify_files(samples, known, settings, unit=unit, quantity=quantity)
+        shown.update(remarks_of(run.results))
+        if not (quiet or files.stream):
+            print_amounts(run.results, run.order)
+        print_refused(run.refused)
+        files.write(run.results)
+    verdicts = [str(verdict) for one in run.results for verdict in one["verdict"].values.ravel()]
+    status: Status = status_of(verdicts, refused=len(run.refused))
+    raise typer.Exit(status)

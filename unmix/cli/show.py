@@ -1,0 +1,117 @@
+"""Results on a terminal: one table for all samples, below it the reasons, what was assumed, and the caution."""
+
+import sys
+from collections.abc import Mapping, Sequence
+
+import xarray as xr
+
+from unmix.cli.output import print_error
+from unmix.cli.terminal import Cell, Column, coloured, painted, print_table, shortened, wrapped
+from unmix.report.details import amounts_of
+from unmix.report.numbers import significant
+from unmix.report.view import Composition, Result
+from unmix.report.words import advice, apartness, lead
+
+#: verdict -> style
+VERDICT_STYLES = {"supported": "good", "doubtful": "warn", "unsupported": "bad"}
+
+
+def remarks_of(results: Sequence[xr.Dataset]) -> list[str]:
+    """What was assumed and noted, each sentence once."""
+    views = [Result(one) for one in results]
+    return list(dict.fromkeys(
+        text for attribute in ("assumptions", "notes") for view in views for text in view.sentences(attribute)
+    ))  # fmt: skip
+
+
+def print_refused(refused: Mapping[str, str]) -> None:
+    """What could not be answered, on standard error."""
+    for name, reason in refused.items():
+        print_error(reason if name in reason else f"{name}: {reason}")
+
+
+def print_amounts(results: Sequence[xr.Dataset], order: Sequence[tuple[str, str]]) -> None:
+    """Amounts of all samples in the order in which they were given, then what a person must know about them."""
+    views = [Composition(one) for one in results]
+    place = {entry: k for k, entry in enumerate(order)}
+    listed = [(view, i) for view in views for i in range(len(view))]
+    listed.sort(
+        key=lambda entry: place.get((entry[0].samples[entry[1]], entry[0].files[entry[1]]), len(place))
+    )
+    columns = [
+        Column("sample", cut=True), Column("component", cut=True), Column("amount", right=True),
+        Column("lower", right=True), Column("upper", right=True), Column("unit"), Column("verdict"),
+    ]  # fmt: skip
+    print_table(columns, [row for view, i in listed for row in _rows(view, i)])
+    print()
+    colour = coloured(sys.stdout)
+    for view, i in listed:
+        verdict = view.verdicts[i]
+        if verdict != "supported":
+            first = f"{shortened(view.samples[i], 30)} {verdict}: "
+            text = wrapped(f"{view.reasons[i].rstrip('.')}. {advice(view, i)}", first=first, rest="  ")
+            print(text.replace(verdict, painted(verdict, VERDICT_STYLES.get(verdict, ""), colour=colour), 1))
+    print(wrapped(lead(views)))
+    print_remarks(results)
+
+
+def _rows(view: Composition, sample: int) -> list[list[str | Cell]]:
+    verdict = view.verdicts[sample]
+    return [
+        [
+            view.samples[sample] if j == 0 else "",
+            view.components[j],
+            one.value.replace(" ", ""),
+            one.lower,
+            one.upper,
+            view.concentration_unit,
+            Cell(verdict, VERDICT_STYLES.get(verdict, "")) if j == 0 else "",
+        ]
+        for j, one in enumerate(amounts_of(view, sample))
+    ]
+
+
+def print_remarks(results: Sequence[xr.Dataset]) -> None:
+    """Assumptions, notes and the caution, below a table."""
+    for text in remarks_of(results):
+        print(wrapped(text, first="note: ", rest="  "))
+    for text in dict.fromkeys(Result(one).text("caution") for one in results):
+        if text:
+            print(painted(wrapped(text), "faint", colour=coloured(sys.stdout)))
+
+
+def print_design(result: xr.Dataset) -> None:
+    """What pure spectra allow: one row a component, then verdict and reason."""
+    view = Result(result)
+    inflation, own = view.per_component("variance_inflation"), view.per_component("selectivity")
+    limits = view.per_component("detection_limit")
+    confused = view.confused_with()
+    unit = view.unit("detection_limit")
+    columns = [
+        Column("component", cut=True), Column("in words"), Column("inflation", right=True),
+        Column("own signal", right=True), Column("detection limit", right=True),
+        Column("taken for", cut=True),
+    ]  # fmt: skip
+    rows = [
+        [
+            name,
+            apartness(inflation[j]),
+            significant(inflation[j], 3),
+            f"{own[j]:.1%}" if own[j] == own[j] else significant(own[j]),
+            f"{significant(limits[j], 2)} {unit}" if limits[j] == limits[j] else significant(limits[j]),
+            confused[j],
+        ]
+        for j, name in enumerate(view.components)
+    ]
+    print_table(columns, rows)
+    print()
+    if "verdict" in result:
+        verdict = str(result["verdict"].item())
+        reason = str(result["reason"].item()) if "reason" in result else ""
+        text = wrapped(f"{verdict}: {reason}", rest="  ")
+        print(
+            text.replace(
+                verdict, painted(verdict, VERDICT_STYLES.get(verdict, ""), colour=coloured(sys.stdout)), 1
+            )
+        )
+    print_remarks([result])
