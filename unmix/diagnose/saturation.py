@@ -1,6 +1,7 @@
 """Saturated channels: bands whose tops are flat because the detector sees no more light."""
 
 import numpy as np
+from scipy.ndimage import median_filter
 
 from unmix.kernels import BoolArray, FloatArray
 
@@ -21,10 +22,11 @@ _MARGIN = 1.5
 def saturated(absorbance: FloatArray) -> tuple[BoolArray, FloatArray]:
     """Channels of each spectrum that stray light or the end of the detector's range has bent.
 
-    A spectrum is saturated when the run of channels above 70% of its maximum holds mostly channels above 95% of
-    it, which no line shape does. Then everything within 1.5 absorbance units of the plateau is left out: with
-    stray light as the cause, a share s of the light, the plateau lies at -log10 s, and 1.5 units below it the
-    measured absorbance is still wrong by 3% of the light (common practice, no source, for the margin).
+    A spectrum is saturated when the widest run of channels above 70% of its maximum holds mostly channels above
+    95% of the level of its top, which no line shape does. Then everything within 1.5 absorbance units of the
+    plateau is left out: with stray light as the cause, a share s of the light, the plateau lies at -log10 s, and
+    1.5 units below it the measured absorbance is still wrong by 3% of the light (common practice, no source, for
+    the margin).
 
     Parameters
     ----------
@@ -42,27 +44,30 @@ def saturated(absorbance: FloatArray) -> tuple[BoolArray, FloatArray]:
     bent = np.zeros(absorbance.shape, dtype=bool)
     plateau = np.full(absorbance.shape[0], np.nan)
     for i in np.flatnonzero(np.isfinite(top) & (top >= _DARK)):
-        level = _plateau(filled[i], float(top[i]))
+        level = _plateau(filled[i], _FEWEST)
+        if level is None:
+            # noise on a plateau can hide it; a running median keeps wide flat tops and loses the spikes
+            level = _plateau(median_filter(filled[i], 5, mode="nearest"), 2 * _FEWEST)
         if level is not None:
             plateau[i] = level
             bent[i] = filled[i] >= level - _MARGIN
     return bent, plateau
 
 
-def _plateau(spectrum: FloatArray, top: float) -> float | None:
-    """Level of the flat top that holds the maximum, or None."""
-    peak = int(spectrum.argmax())
-    high = spectrum >= 0.7 * top
-    left, right = peak, peak + 1
-    while left > 0 and high[left - 1]:
-        left -= 1
-    while right < spectrum.size and high[right]:
-        right += 1
+def _plateau(spectrum: FloatArray, fewest: int) -> float | None:
+    """Level of a flat top, looked for in the widest band that reaches 90% of the highest; None without one."""
+    top = spectrum.max()
+    if not np.isfinite(top):
+        return None
+    edges = np.diff(np.concatenate([[False], spectrum >= 0.7 * top, [False]]))
+    runs = np.flatnonzero(edges).reshape(-1, 2)
+    runs = runs[[spectrum[left:right].max() >= 0.9 * top for left, right in runs]]
+    left, right = runs[np.argmax(runs[:, 1] - runs[:, 0])]
     run = spectrum[left:right]
-    # noise grows on the plateau, so its level is the median of the upper part and not the maximum
-    level = float(np.median(run[run >= 0.9 * top]))
+    # noise is left on the plateau, so its level is the median of the upper part and not the maximum
+    level = float(np.median(run[run >= 0.9 * run.max()]))
     flat = np.count_nonzero(run >= 0.95 * level)
     clear_ends = left > 0 and right < spectrum.size
-    if flat < _FEWEST or flat < _PLATEAU * run.size or not (clear_ends or flat >= 3 * _FEWEST):
+    if flat < fewest or flat < _PLATEAU * run.size or not (clear_ends or flat >= 3 * _FEWEST):
         return None
     return level
