@@ -6,7 +6,7 @@ from scipy.ndimage import median_filter
 from unmix.kernels import BoolArray, FloatArray
 
 #: absorbance below which a flat top is taken for the shape of the spectrum
-_DARK = 1.0
+_DARK = 1.5
 
 #: at or above this share of its run above 70% of the maximum, the part above 95% is a plateau (Gaussian 0.38,
 #: Lorentzian 0.35)
@@ -18,13 +18,19 @@ _FEWEST = 4
 #: with stray light s the highest absorbance is -log10 s; this far below it, s is 3% of the light
 _MARGIN = 1.5
 
+#: what tells a plateau from bands that happen to merge: noise on it this many times that elsewhere, since noise grows
+#: as ten to the absorbance, or a middle half that is level to this share
+_ROUGH = 4.0
+_LEVEL = 0.005
+
 
 def saturated(absorbance: FloatArray) -> tuple[BoolArray, FloatArray]:
     """Channels of each spectrum that stray light or the end of the detector's range has bent.
 
     A spectrum is saturated when the widest run of channels above 70% of its maximum holds mostly channels above
-    95% of the level of its top, which no line shape does. Then everything within 1.5 absorbance units of the
-    plateau is left out: with stray light as the cause, a share s of the light, the plateau lies at -log10 s, and
+    95% of the level of its top, which no line shape does, and when this plateau is rougher than the rest of the
+    spectrum or quite level. Then everything within 1.5 absorbance units of the plateau (or half of it, if that is
+    less) is left out: with stray light as the cause, a share s of the light, the plateau lies at -log10 s, and
     1.5 units below it the measured absorbance is still wrong by 3% of the light (common practice, no source, for
     the margin).
 
@@ -50,7 +56,7 @@ def saturated(absorbance: FloatArray) -> tuple[BoolArray, FloatArray]:
             level = _plateau(median_filter(filled[i], 5, mode="nearest"), 2 * _FEWEST)
         if level is not None:
             plateau[i] = level
-            bent[i] = filled[i] >= level - _MARGIN
+            bent[i] = filled[i] >= level - min(_MARGIN, 0.5 * level)
     return bent, plateau
 
 
@@ -70,4 +76,16 @@ def _plateau(spectrum: FloatArray, fewest: int) -> float | None:
     clear_ends = left > 0 and right < spectrum.size
     if flat < fewest or flat < _PLATEAU * run.size or not (clear_ends or flat >= 3 * _FEWEST):
         return None
-    return level
+    return level if _unlike_bands(run[run >= 0.9 * level], spectrum, level) else None
+
+
+def _unlike_bands(top: FloatArray, spectrum: FloatArray, level: float) -> bool:
+    """Whether a plateau is too level or too rough for bands that merge."""
+    inner = float(np.subtract(*np.percentile(top, [75, 25])))
+    return inner <= _LEVEL * level or _roughness(top) > _ROUGH * _roughness(spectrum[np.isfinite(spectrum)])
+
+
+def _roughness(values: FloatArray) -> float:
+    """Typical second difference, which bands leave small and noise does not."""
+    return float(np.median(np.abs(np.diff(values, 2)))) if values.size > 2 else 0.0
+
