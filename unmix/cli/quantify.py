@@ -58,13 +58,14 @@ def command(
             "nonnegative": not no_nonnegative,
         }
         from unmix.cli.samples import quantify_files, read_pure  # noqa: PLC0415 - heavy
-        from unmix.cli.show import print_amounts, print_refused, remarks_of  # noqa: PLC0415 - heavy
+        from unmix.cli.show import print_amounts, print_reasons, print_refused, remarks_of  # noqa: PLC0415 - heavy
 
         known = read_pure(pure, unit=pure_unit, quantity=pure_quantity, per=per)
         run = quantify_files(samples, known, settings, unit=unit, quantity=quantity)
         shown.update(remarks_of(run.results))
         if not (quiet or files.stream):
             print_amounts(run.results, run.order)
+            print_reasons(run.results, run.order)
         print_refused(run.refused)
         files.write(run.results)
     verdicts = [str(verdict) for one in run.results for verdict in one["verdict"].values.ravel()]

@@ -1,5 +1,6 @@
 """Results on a terminal: one table for all samples, below it the reasons, what was assumed, and the caution."""
 
+import math
 import sys
 from collections.abc import Mapping, Sequence
 
@@ -31,7 +32,7 @@ def print_refused(refused: Mapping[str, str]) -> None:
 
 
 def print_amounts(results: Sequence[xr.Dataset], order: Sequence[tuple[str, str]]) -> None:
-    """Amounts of all samples in the order in which they were given, then what a person must know about them."""
+    """Amounts of all samples in the order in which they were given."""
     views = [Composition(one) for one in results]
     place = {entry: k for k, entry in enumerate(order)}
     listed = [(view, i) for view in views for i in range(len(view))]
@@ -44,15 +45,59 @@ def print_amounts(results: Sequence[xr.Dataset], order: Sequence[tuple[str, str]
     ]  # fmt: skip
     print_table(columns, [row for view, i in listed for row in _rows(view, i)])
     print()
+
+
+def print_reasons(results: Sequence[xr.Dataset], order: Sequence[tuple[str, str]]) -> None:
+    """Why answers are in question and what to do next, then what was assumed and the caution."""
     colour = coloured(sys.stdout)
-    for view, i in listed:
+    for view, i in _in_order(results, order):
         verdict = view.verdicts[i]
         if verdict != "supported":
             first = f"{shortened(view.samples[i], 30)} {verdict}: "
-            text = wrapped(f"{view.reasons[i].rstrip('.')}. {advice(view, i)}", first=first, rest="  ")
+            text = wrapped(view.reasons[i], first=first, rest="  ")
             print(text.replace(verdict, painted(verdict, VERDICT_STYLES.get(verdict, ""), colour=colour), 1))
-    print(wrapped(lead(views)))
+            print(wrapped(advice(view, i), first="  Next: ", rest="  "))
+    print(wrapped(lead([Composition(one) for one in results])))
     print_remarks(results)
+
+
+def print_against(
+    results: Sequence[xr.Dataset], order: Sequence[tuple[str, str]], truth: Mapping[str, Mapping[str, float]]
+) -> None:
+    """Amounts beside the true ones, and whether the interval holds them."""
+    columns = [
+        Column("sample", cut=True), Column("component", cut=True), Column("true", right=True),
+        Column("amount", right=True), Column("interval", right=True), Column("unit"), Column("holds it"),
+    ]  # fmt: skip
+    rows: list[list[str | Cell]] = []
+    for view, i in _in_order(results, order):
+        known = truth.get(view.samples[i], {})
+        for j, one in enumerate(amounts_of(view, i)):
+            true = known.get(view.components[j], math.nan)
+            if not math.isfinite(true):
+                continue
+            low, high = (view.table(name)[i, j] for name in ("lower", "upper"))
+            inside = low <= true <= high
+            holds = Cell("yes" if inside else "no", "good" if inside else "bad") if one.known else Cell("-")
+            name = view.samples[i] if j == 0 else ""
+            amount = one.value.replace(" ", "")
+            rows.append(
+                [name, view.components[j], f"{true:g}", amount, one.interval, view.concentration_unit, holds]
+            )
+    print_table(columns, rows)
+    print()
+
+
+def _in_order(
+    results: Sequence[xr.Dataset], order: Sequence[tuple[str, str]]
+) -> list[tuple[Composition, int]]:
+    """All samples of all results in the order in which they were given."""
+    place = {entry: k for k, entry in enumerate(order)}
+    listed = [(view, i) for view in map(Composition, results) for i in range(len(view))]
+    return sorted(
+        listed,
+        key=lambda entry: place.get((entry[0].samples[entry[1]], entry[0].files[entry[1]]), len(place)),
+    )
 
 
 def _rows(view: Composition, sample: int) -> list[list[str | Cell]]:
@@ -97,8 +142,8 @@ def print_design(result: xr.Dataset) -> None:
             name,
             apartness(inflation[j]),
             significant(inflation[j], 3),
-            f"{own[j]:.1%}" if own[j] == own[j] else significant(own[j]),
-            f"{significant(limits[j], 2)} {unit}" if limits[j] == limits[j] else significant(limits[j]),
+            f"{own[j]:.1%}" if math.isfinite(own[j]) else significant(own[j]),
+            f"{significant(limits[j], 2)} {unit}" if math.isfinite(limits[j]) else significant(limits[j]),
             confused[j],
         ]
         for j, name in enumerate(view.components)

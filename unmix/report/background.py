@@ -82,10 +82,7 @@ def _conditioning_of(view: Result, *, several: bool) -> list[Markup]:
         ]
         for j, name in enumerate(view.components)
     ]
-    where = _range(view) if several else ""
-    parts = []
-    if several:
-        parts.append(element("h3", where))
+    parts = [element("h3", _range(view))] if several else []
     pairs = confused_pairs(view)
     if pairs:
         told = "; ".join(f"{shown(one)} from {shown(other)}" for one, other in pairs)
@@ -95,15 +92,19 @@ def _conditioning_of(view: Result, *, several: bool) -> list[Markup]:
         parts.append(element("p", f"Largest condition index {significant(largest)}."))
     return [
         *parts,
-        _table(f"Overlap of the pure spectra {where}".strip(), titles, "ttnnt" + "n" * limited, rows),
+        _table(
+            "Overlap of the pure spectra with each other and the baseline",
+            titles,
+            "ttnnt" + "n" * limited,
+            rows,
+        ),
     ]
 
 
 def _range(view: Result) -> str:
     if not view.dim:
         return ""
-    low, high = (significant(end, 5) for end in (view.axis.min(), view.axis.max()))
-    return f"{low} to {high} {view.axis_unit}, {view.axis.size} channels"
+    return f"{view.axis.min():.6g} to {view.axis.max():.6g} {view.axis_unit}, {view.axis.size} channels"
 
 
 def measurable(view: Result) -> Markup | None:

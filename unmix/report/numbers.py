@@ -4,7 +4,7 @@ import math
 from dataclasses import dataclass
 
 #: outside these bounds a number is written with a power of ten
-_PLAIN = (1e-3, 1e6)
+_PLAIN = (1e-4, 1e6)
 
 #: what stands where nothing could be determined
 ABSENT = "\N{EN DASH}"

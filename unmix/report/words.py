@@ -11,6 +11,9 @@ from unmix.report.view import VERDICTS, Composition, Result
 #: gives 10 as the usual bound; at 100 a tenth of the signal is left to a component alone)
 OVERLAPS, HARDLY_APART = 10.0, 100.0
 
+#: an unexplained band that spans more than this part of the axis looks like a baseline
+BROAD = 0.04
+
 #: what each verdict allows
 USE = {
     "supported": "use the values with their intervals",
@@ -51,26 +54,20 @@ def advice(view: Composition, sample: int) -> str:
     """What to do next about one sample."""
     if view.verdicts[sample] == "supported":
         return "Use the values with their intervals."
-    steps = []
-    saturated = view.per_sample("channels_saturated")[sample]
-    if saturated > 0:
-        steps.append("Measure again with a shorter path or diluted.")
+    if view.per_sample("channels_saturated")[sample] > 0:
+        return "Measure again with a shorter path or diluted."
     limit = view.per_sample("misfit_limit")[sample]
     bands = [band for band in view.unexplained(sample) if not abs(band["score"]) < limit]
-    if bands:
-        where = f"{significant(bands[0]['position'], 4)} {view.axis_unit}"
-        if bands[0]["score"] > 0:
-            steps.append(f"Find out what absorbs at {where}, add its pure spectrum and run again.")
-        else:
-            steps.append(
-                f"Check the pure spectra at {where}: the fit has a band there that the sample lacks."
-            )
-    mixed = confused_pairs(view)
-    if mixed and not steps:
-        steps.append(f"Use regions in which {mixed[0][0]} and {mixed[0][1]} differ.")
-    if not steps:
-        steps.append("Act on the reason given, then measure or run again.")
-    return " ".join(steps)
+    if view.verdicts[sample] == "unsupported" and confused_pairs(view):
+        return "Measure a wider range, or choose regions in which the components differ."
+    if not bands:
+        return "Act on the reason given, then measure or run again."
+    where = f"{significant(bands[0]['position'], 4)} {view.axis_unit}"
+    if bands[0]["width"] > BROAD * np.ptp(view.axis):
+        return f"The misfit near {where} is broad: try a baseline of higher order, then run again."
+    if bands[0]["score"] < 0:
+        return f"Check the pure spectra at {where}: the fit has a band there that the sample lacks."
+    return f"Find out what absorbs at {where}, add its pure spectrum and run again."
 
 
 def confused_pairs(view: Result) -> list[tuple[str, str]]:
@@ -98,7 +95,7 @@ def curve_summary(view: Composition, sample: int) -> str:
     noise = view.per_sample("noise_level")[sample]
     bands = view.unexplained(sample)
     parts = [
-        f"Measured and fitted spectrum from {significant(axis.min(), 4)} to {significant(axis.max(), 4)} "
+        f"Measured and fitted spectrum from {axis.min():.6g} to {axis.max():.6g} "
         f"{view.axis_unit}, the residual below them, and the contribution of each of "
         f"{len(view.components)} components."
     ]
