@@ -1,6 +1,7 @@
 """Make the demo set: pure spectra of five liquids and eight drums of recovered isopropanol, all invented.
 
-``python make.py`` writes the files beside this script, ``python make.py FOLDER`` elsewhere.
+``python make.py`` writes the files beside this script, ``python make.py FOLDER`` elsewhere. The files are written
+here and not by unmix, in the forms of different instruments, so that reading them is a check of the reader.
 """
 
 import csv
