@@ -314,7 +314,7 @@ def unexplained_bands(fit: Whitened, t: Templates, limit: float) -> Bands:
         rest = whitened - along @ fit.basis
         rest -= (extra @ rest) @ extra
         length = float(np.linalg.norm(rest))
-        if length < 1e-6 * np.linalg.norm(whitened):
+        if length <= 1e-6 * np.linalg.norm(whitened):
             break
         unit = rest / length
         amount = float(unit @ residual) / length

@@ -20,6 +20,9 @@ _UNSUPPORTED_SHARE = 0.25
 #: to exchange the components (100 also is where Belsley, Kuh and Welsch see numbers in trouble)
 _EXCHANGEABLE = 100.0
 
+#: growth of the residual from low to high absorbance that noise alone does not reach
+GROWING = 2.5
+
 #: a group of components is there when its common signal is this many times its noise
 _PRESENT = 5.0
 
@@ -72,6 +75,8 @@ class Evidence:
     channels_missing: int = 0
     channels_saturated: int = 0
     plateau: float = float("nan")
+    stray: float = 0.0
+    growth: float = 1.0
     freedom: float = float("inf")
     noise_level: float = float("nan")
     noise_given: float | None = None
@@ -152,6 +157,12 @@ def _confusion(evidence: Evidence, words: Words) -> list[tuple[int, str]]:
 def _saturation(evidence: Evidence) -> list[tuple[int, str]]:
     n = evidence.channels_saturated
     if n == 0:
+        if evidence.stray > 0:
+            return [(1, f"Stray light, {100 * evidence.stray:.2g}% of the light, bends the strong bands; it was fitted "
+                        "and taken off.")]  # fmt: skip
+        if evidence.growth > GROWING:
+            return [(1, f"The residual is {evidence.growth:.2g} times larger where the sample absorbs strongly: the "
+                        "straight line between amount and absorbance has an end there.")]  # fmt: skip
         return []
     total = n + evidence.channels_used
     where = f"flat near {evidence.plateau:.2g} absorbance" if np.isfinite(evidence.plateau) else "no light gets through"

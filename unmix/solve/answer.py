@@ -26,7 +26,8 @@ class Settings:
 AMOUNTS = ("concentration", "standard_uncertainty", "lower", "upper", "critical_level", "detection_limit",
            "quantification_limit", "misfit_harm", "negative")  # fmt: skip
 CURVES = ("fitted", "baseline")
-FIGURES = ("noise_level", "noise_correlation_length", "freedom", "misfit_z", "misfit_limit")
+FIGURES = ("noise_level", "noise_correlation_length", "freedom", "misfit_z", "misfit_limit", "residual_growth",
+           "stray_light")  # fmt: skip
 
 
 @dataclass
@@ -53,6 +54,8 @@ class Answer:
     freedom: FloatArray
     misfit_z: FloatArray
     misfit_limit: FloatArray
+    residual_growth: FloatArray
+    stray_light: FloatArray
     bands: list[Bands | None]
     groups: list[list[tuple[float, list[int]]]]
 
@@ -62,3 +65,9 @@ class Answer:
         shapes = dict.fromkeys(AMOUNTS, (n, k)) | dict.fromkeys(CURVES, (n, p)) | dict.fromkeys(FIGURES, (n,))
         arrays: dict[str, Any] = {name: np.full(shape, np.nan) for name, shape in shapes.items()}
         return cls(**arrays, bands=[None] * n, groups=[[] for _ in range(n)])
+
+    def put(self, row: int, one: "Answer") -> None:
+        """Replace a row by the only row of another answer."""
+        for name in (*AMOUNTS, *CURVES, *FIGURES):
+            getattr(self, name)[row] = getattr(one, name)[0]
+        self.bands[row], self.groups[row] = one.bands[0], one.groups[0]

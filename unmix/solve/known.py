@@ -17,9 +17,11 @@ from unmix.kernels import FloatArray
 from unmix.kernels.linalg import polynomial_terms
 from unmix.prepare.axis import common_axis, select_regions
 from unmix.provenance import provenance
-from unmix.solve.analysis import Progress, analyse
+from unmix.solve.analysis import Progress
 from unmix.solve.answer import Answer, Settings
 from unmix.solve.options import check_baseline, check_level, check_noise
+from unmix.solve.passes import Light, solve
+from unmix.solve.passes import noise_model as models
 from unmix.solve.paths import path_of, scale_to_path
 from unmix.solve.result import assemble
 from unmix.spectra import as_absorbance, as_pure, spectral_dim
@@ -38,6 +40,9 @@ class KnownSpectra(MultiOutputMixin, RegressorMixin, BaseEstimator):
         Coverage of the intervals.
     noise : float or array_like of shape (channels,), optional
         Known standard deviation of a channel; estimated from the residual, with its correlation, when None.
+    noise_model : {'constant', 'detector', 'source'}, optional
+        How the noise depends on the light: constant in absorbance (the default), constant in transmittance, or as the
+        root of the transmittance; ``noise`` then is that of a clear channel.
     axis : array_like of shape (channels,), optional
         Positions of the channels, for the baseline; evenly spaced when None.
 
@@ -72,12 +77,14 @@ class KnownSpectra(MultiOutputMixin, RegressorMixin, BaseEstimator):
         nonnegative: bool = True,
         level: float = 0.95,
         noise: Any = None,
+        noise_model: str | None = None,
         axis: Any = None,
     ) -> None:
         self.baseline = baseline
         self.nonnegative = nonnegative
         self.level = level
         self.noise = noise
+        self.noise_model = noise_model
         self.axis = axis
 
     def __sklearn_tags__(self) -> Any:
@@ -147,8 +154,15 @@ class KnownSpectra(MultiOutputMixin, RegressorMixin, BaseEstimator):
         amounts = self.analyse(spectra).concentration
         return amounts[:, 0] if self._flat else amounts
 
-    def analyse(self, X: Any, used: Any = None, *, pure_uncertainty: Any = 0.0,
-                progress: Progress | None = None) -> Answer:
+    def analyse(
+        self,
+        X: Any,
+        used: Any = None,
+        *,
+        pure_uncertainty: Any = 0.0,
+        plateau: Any = np.nan,
+        progress: Progress | None = None,
+    ) -> Answer:
         """Amounts with intervals, limits, fit and misfit, as plain arrays.
 
         Parameters
@@ -158,6 +172,8 @@ class KnownSpectra(MultiOutputMixin, RegressorMixin, BaseEstimator):
             Channels that count; by default the finite ones.
         pure_uncertainty : float or array_like, shape (components,)
             Relative standard uncertainty of the pure spectra.
+        plateau : float or array_like, shape (spectra,)
+            Absorbance of the flat tops of saturated spectra, whose stray light then joins the fit; NaN for none.
         progress : callable, optional
             Called with the number of spectra finished.
 
@@ -170,15 +186,19 @@ class KnownSpectra(MultiOutputMixin, RegressorMixin, BaseEstimator):
         counts = np.isfinite(spectra) if used is None else np.asarray(used, dtype=bool) & np.isfinite(spectra)
         counts = counts & np.isfinite(self.pure_).all(axis=0)
         noise = 1.0 if self.noise is None else np.asarray(self.noise, dtype=float)
-        weight = np.where(counts, 1.0 / noise, 0.0)
+        light = Light(
+            models(self.noise_model, measured_as_transmittance=False),
+            np.broadcast_to(np.asarray(plateau, dtype=float), spectra.shape[:1]),
+        )
         settings = Settings(self.level, self.nonnegative, known_noise=self.noise is not None)
         relative = np.broadcast_to(np.asarray(pure_uncertainty, dtype=float), (self.pure_.shape[0],))
-        return analyse(spectra, weight, self.pure_.T, self._free, relative, settings, progress)
+        return solve(spectra, counts, noise, self.pure_.T, self._free, relative, settings, light, progress)
 
     def _check(self) -> None:
         check_baseline(self.baseline)
         check_level(self.level)
         check_noise(self.noise)
+        models(self.noise_model, measured_as_transmittance=False)
 
 
 def quantify(
@@ -190,6 +210,7 @@ def quantify(
     regions: Sequence[tuple[float, float]] | None = None,
     level: float = 0.95,
     noise: Any = None,
+    noise_model: str | None = None,
     path_length: Any = None,
     progress: Progress | None = None,
 ) -> xr.Dataset:
@@ -213,6 +234,9 @@ def quantify(
         Coverage of the intervals.
     noise : float or array_like, optional
         Known standard deviation of a channel, in absorbance.
+    noise_model : {'constant', 'detector', 'source'}, optional
+        How the noise depends on the light: constant in absorbance, constant in transmittance (the default for
+        samples that come as transmittance), or as the root of the transmittance.
     path_length : float, str or sequence, optional
         Of the samples: centimetres or a text such as ``"25 um"``, one for all or one each. Takes precedence over
         the coordinate ``path_length``.
@@ -264,12 +288,14 @@ def quantify(
         )
     paths = path_of(given, known, path_length)
     assumptions += paths.assumptions
+    lost_light = samples.attrs.get("measured_as") == "transmittance"
+    model = models(noise_model, measured_as_transmittance=lost_light)
     estimator = KnownSpectra(baseline=baseline, nonnegative=nonnegative, level=level, noise=noise,
-                             axis=samples[spectral_dim(samples)].values)  # fmt: skip
+                             noise_model=model, axis=samples[spectral_dim(samples)].values)  # fmt: skip
     estimator.fit(np.nan_to_num(scale_to_path(known, paths)))
     estimator.pure_ = scale_to_path(known, paths)
     settings = {"nonnegative": nonnegative, "baseline": baseline, "regions": regions, "level": level,
-                "noise": noise, "path_length": path_length}  # fmt: skip
+                "noise": noise, "noise_model": model, "path_length": path_length}  # fmt: skip
     result = assemble(samples, known, estimator, paths, progress)
     return result.assign_attrs(
         kind="quantify",

@@ -48,6 +48,7 @@ _FIGURES = {
     "noise_level": ("Standard deviation of the noise of one channel", "signal"),
     "noise_correlation_length": ("Correlation length of the noise", "channels"),
     "misfit_z": ("Largest score of an unexplained band", "1"),
+    "stray_light": ("Stray light, as a share of the light", "1"),
     "misfit_limit": ("Limit of the score, one false alarm in a hundred spectra", "1"),
 }
 
@@ -81,7 +82,7 @@ def assemble(
     usable = np.isfinite(estimator.pure_).all(axis=0)
     used = present & ~bent & usable
     uncertainty = _relative_uncertainty(pure)
-    answer = estimator.analyse(rows, used, pure_uncertainty=uncertainty, progress=progress)
+    answer = estimator.analyse(rows, used, pure_uncertainty=uncertainty, plateau=plateau, progress=progress)
     _per_path(answer, paths.factor)
     words = Words([str(c) for c in pure["component"].values], paths.amount_unit, SPECTRAL_UNITS[spectral_dim(samples)])
     lost_light = samples.attrs.get("measured_as") == "transmittance"
@@ -143,6 +144,8 @@ def _evidence(
         misfit_limit=float(answer.misfit_limit[i]),
         bands=_bands(answer.bands[i], axis),
         harm=answer.misfit_harm[i],
+        growth=float(answer.residual_growth[i]),
+        stray=float(np.nan_to_num(answer.stray_light[i])),
         negative=answer.negative[i] if estimator.nonnegative else np.zeros(0),
         groups=answer.groups[i],
     )
@@ -188,7 +191,7 @@ def _dataset(
         "measured": (measured, "Measured"),
         "fitted": (answer.fitted, "Fitted"),
         "residual": (residual, "Measured less fitted"),
-        "baseline": (answer.baseline, "Fitted baseline"),
+        "baseline": (answer.baseline, "Fitted baseline, with stray light where it was fitted"),
     }
     data |= {key: over(values, dim, name=text, units=signal_unit) for key, (values, text) in curves.items()}
     data["used"] = over(used, dim, name="Channel used in the fit")

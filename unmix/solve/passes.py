@@ -1,0 +1,195 @@
+"""Second passes: what a first fit teaches about the channels of one spectrum, and the fit with it.
+
+Noise that is constant in transmittance grows as ten to the absorbance, so channels are weighed by the fitted
+absorbance; stray light bends a saturated spectrum, so it is taken off and what is uncertain about it joins the fit.
+"""
+
+from dataclasses import dataclass
+
+import numpy as np
+
+from unmix.diagnose.verdict import GROWING
+from unmix.errors import InputError
+from unmix.kernels import BoolArray, FloatArray
+from unmix.kernels.stray import fit_stray
+from unmix.solve.analysis import Progress, analyse
+from unmix.solve.answer import Answer, Settings
+
+#: how noise depends on the light: constant in absorbance; constant in transmittance (detector); as its root (source)
+NOISE_MODELS = ("constant", "detector", "source")
+
+#: share of the exponent 10^A by which each model's noise grows
+_GROWTH = {"constant": 0.0, "detector": 1.0, "source": 0.5}
+
+#: absorbance at the top of a spectrum below which stray light is not looked for
+_DARK_ENOUGH = 0.7
+
+#: absorbance up to which a first fit is little bent by stray light
+_STRAIGHT = 0.7
+
+#: fall of the sum of squares that stray light must bring, and its least share
+_GAIN = 2.0
+_LEAST = 1e-5
+
+#: channels within this of the highest absorbance that stray light allows are left out
+_BENT = 0.3
+
+#: relative noise of the transmittance from which the logarithm bends its mean by half of a percent
+_TOO_DARK = 0.1
+
+
+@dataclass(frozen=True)
+class Light:
+    """What is known about the light of each spectrum.
+
+    Attributes
+    ----------
+    model : str
+        One of ``NOISE_MODELS``.
+    plateau : ndarray, shape (spectra,)
+        Absorbance of a flat top; NaN without one.
+    """
+
+    model: str
+    plateau: FloatArray
+
+
+def noise_model(given: str | None, *, measured_as_transmittance: bool) -> str:
+    """Model of the noise: the one given, else constant in what was measured.
+
+    Raises
+    ------
+    InputError
+        When the name is not known.
+    """
+    if given is None:
+        return "detector" if measured_as_transmittance else "constant"
+    if given not in NOISE_MODELS:
+        raise InputError(f"noise_model is {given!r}", accepted=f"give one of {', '.join(NOISE_MODELS)}")
+    return given
+
+
+def solve(
+    y: FloatArray,
+    used: BoolArray,
+    noise: FloatArray | float,
+    signal: FloatArray,
+    free: FloatArray,
+    pure_uncertainty: FloatArray,
+    settings: Settings,
+    light: Light,
+    progress: Progress | None = None,
+) -> Answer:
+    """Solve all spectra, and once more those whose weights or design depend on their own fit.
+
+    Parameters
+    ----------
+    y : ndarray, shape (spectra, channels)
+    used : ndarray of bool, shape (spectra, channels)
+    noise : float or ndarray, shape (channels,)
+        Standard deviation of a channel in the light of a clear sample; 1 where unknown.
+    signal, free, pure_uncertainty, settings, progress
+        As for :func:`unmix.solve.analysis.analyse`.
+    light : Light
+
+    Returns
+    -------
+    Answer
+    """
+    weight = np.where(used, 1.0 / np.asarray(noise), 0.0)
+    growth = _GROWTH[light.model]
+    quiet = growth == 0 and not np.isfinite(light.plateau).any()
+    answer = analyse(y, weight, signal, free, pure_uncertainty, settings, progress if quiet else None)
+    answer.residual_growth[:] = _residual_growth(y, used, answer.fitted)
+    answer.stray_light[:] = 0.0
+    columns = np.hstack([free, signal])
+    for i in range(y.shape[0]):
+        stray = _stray_of(i, y, used, columns, answer, light) if np.isfinite(answer.noise_level[i]) else 0.0
+        if stray or (growth > 0 and np.isfinite(answer.noise_level[i])):
+            one = _again(y[i], weight[i], stray, growth, columns, free.shape[1], pure_uncertainty, settings, answer, i)
+            answer.put(i, one)
+            answer.stray_light[i] = stray
+            answer.residual_growth[i] = 1.0
+        if progress and not quiet:
+            progress(i + 1)
+    return answer
+
+
+def _again(
+    y: FloatArray,
+    weight: FloatArray,
+    stray: float,
+    growth: float,
+    columns: FloatArray,
+    n_free: int,
+    pure_uncertainty: FloatArray,
+    settings: Settings,
+    answer: Answer,
+    i: int,
+) -> Answer:
+    """Fit one spectrum with weights from its first fit, stray light taken off."""
+    free, signal = columns[:, :n_free], columns[:, n_free:]
+    dark = np.clip(_without_stray(answer.fitted[i], stray), 0.0, 6.0)
+    # where stray light counts, the detector's noise is what limits the channels beside
+    relative = 10.0 ** ((1.0 if stray else growth) * dark)
+    row = weight / relative
+    # the level of a clear channel, from the first fit, tells where the light is too weak
+    clear = answer.noise_level[i] / np.median(relative[weight != 0])
+    too_dark = np.log(10.0) * clear * relative > _TOO_DARK
+    if (row[~too_dark] != 0).sum() > columns.shape[1]:
+        row = np.where(too_dark, 0.0, row)
+    if not stray:
+        return analyse(y[None], row[None], signal, free, pure_uncertainty, settings)
+    bent = np.where(_with_stray(dark, stray) > -np.log10(stray) - _BENT, 0.0, row)
+    row = bent if (bent != 0).sum() > columns.shape[1] + 1 else row
+    with_stray = np.hstack([free, (stray * (10.0**dark - 1.0))[:, None]])
+    one = analyse(_without_stray(y[None], stray), row[None], signal, with_stray, pure_uncertainty, settings)
+    one.fitted[0], one.baseline[0] = _with_stray(one.fitted[0], stray), _with_stray(one.baseline[0], stray)
+    return one
+
+
+def _stray_of(
+    i: int, y: FloatArray, used: BoolArray, columns: FloatArray, answer: Answer, light: Light
+) -> float:
+    """Share of stray light of a spectrum, 0 where the data do not ask for it."""
+    flat = np.isfinite(light.plateau[i])
+    suspicious = answer.residual_growth[i] > GROWING or abs(answer.misfit_z[i]) > answer.misfit_limit[i]
+    top = np.max(y[i], initial=0.0, where=np.isfinite(y[i]))
+    if not flat and not (suspicious and top > _DARK_ENOUGH):
+        return 0.0
+    keep = np.isfinite(y[i]) if flat else used[i]
+    low = keep & (np.nan_to_num(y[i], nan=np.inf) < _STRAIGHT)
+    if low.sum() < 2 * columns.shape[1]:
+        low = keep
+    start = np.linalg.lstsq(columns[low], y[i, low], rcond=1e-12)[0]
+    first = 10.0 ** -float(light.plateau[i]) if flat else 10.0 ** -(top + 0.5)
+    found = fit_stray(y[i, keep], columns[keep], start, first)
+    if found.gain > _GAIN and found.share > _LEAST:
+        return found.share
+    return first if flat else 0.0
+
+
+def _residual_growth(y: FloatArray, used: BoolArray, fitted: FloatArray) -> FloatArray:
+    """Residual where the fit is above 60% of its maximum over that where it is below 30%, as standard deviations."""
+    counts = used & np.isfinite(fitted)
+    residual = np.where(counts, np.nan_to_num(y) - np.nan_to_num(fitted), 0.0) ** 2
+    top = np.max(np.nan_to_num(fitted), axis=1, initial=0.0)[:, None]
+    high, low = counts & (fitted > 0.6 * top), counts & (fitted < 0.3 * top)
+    n_high, n_low = high.sum(axis=1), low.sum(axis=1)
+    with np.errstate(divide="ignore", invalid="ignore"):
+        ratio = np.sqrt((residual * high).sum(axis=1) / n_high / ((residual * low).sum(axis=1) / n_low))
+    grown: FloatArray = np.where((n_high >= 8) & (n_low >= 20), np.nan_to_num(ratio, nan=1.0), 1.0)
+    return grown
+
+
+def _without_stray(absorbance: FloatArray, stray: float) -> FloatArray:
+    """Absorbance without a share of stray light; far on the plateau it is cut off, those channels do not count."""
+    light = 10.0**-absorbance * (1.0 + stray) - stray
+    straight: FloatArray = -np.log10(np.maximum(light, 0.1 * stray if stray else np.finfo(float).tiny))
+    return straight
+
+
+def _with_stray(absorbance: FloatArray, stray: float) -> FloatArray:
+    """Absorbance as it is measured in the presence of a share of stray light."""
+    bent: FloatArray = -np.log10((10.0**-absorbance + stray) / (1.0 + stray))
+    return bent
