@@ -35,7 +35,9 @@ def build_quantify(n_samples=8, axis=None, names=None, labels=None, noise=5e-4, 
     pure = np.array([bands(axis + 3 * (j // 4), one) for j, one in enumerate(lines)])
     truth = rng.uniform(5, 80, (n, k))
     truth[0, -1] = 0.0
-    base = np.outer(rng.normal(0.01, 0.01, n), np.ones(p)) + np.outer(rng.normal(0, 0.01, n), np.linspace(-1, 1, p))
+    base = np.outer(rng.normal(0.01, 0.01, n), np.ones(p)) + np.outer(
+        rng.normal(0, 0.01, n), np.linspace(-1, 1, p)
+    )
     measured = truth @ pure + base + rng.normal(0, noise, (n, p))
     if n > 2:  # an unlisted compound in the second sample, saturated bands in the third
         measured[1] += 0.3 * bands(axis, [(1740, 18, 100)])
@@ -58,8 +60,11 @@ def build_quantify(n_samples=8, axis=None, names=None, labels=None, noise=5e-4, 
     verdict = np.array(["supported"] * n, dtype=object)
     reason = np.array(["no unexplained band (largest z 3.1, limit 4.3)"] * n, dtype=object)
     if n > 2:
-        verdict[1], reason[1] = "unsupported", (
-            "a band at 1740 cm-1, about 18 cm-1 wide, is not explained (z = 41); it could move acetone by 3.2 g/L"
+        verdict[1], reason[1] = (
+            "unsupported",
+            (
+                "a band at 1740 cm-1, about 18 cm-1 wide, is not explained (z = 41); it could move acetone by 3.2 g/L"
+            ),
         )
         verdict[2], reason[2] = "doubtful", "37 of 838 channels are saturated and were left out"
     per = ("sample", "component")
@@ -92,16 +97,24 @@ def build_quantify(n_samples=8, axis=None, names=None, labels=None, noise=5e-4, 
         "channels_used": described(("sample", used.sum(1)), "channels used", "1"),
         "channels_missing": described(("sample", np.zeros(n, dtype=int)), "channels missing", "1"),
         "channels_saturated": described(("sample", (~used).sum(1)), "channels saturated", "1"),
-        "misfit_z": described(("sample", np.where(np.arange(n) == 1, 41.0, 3.1)), "largest misfit score", "1"),
+        "misfit_z": described(
+            ("sample", np.where(np.arange(n) == 1, 41.0, 3.1)), "largest misfit score", "1"
+        ),
         "misfit_limit": described(("sample", np.full(n, 4.3)), "misfit limit", "1"),
         "lack_of_fit": described(("sample", np.full(n, 0.4)), "lack of fit", "percent"),
         "misfit_position": described((("sample", "misfit_band"), position), "position", "cm-1"),
-        "misfit_width": described((("sample", "misfit_band"), np.where(filled, 18.0, np.nan)), "width", "cm-1"),
-        "misfit_height": described((("sample", "misfit_band"), np.where(filled, 0.03, np.nan)), "height", "1"),
+        "misfit_width": described(
+            (("sample", "misfit_band"), np.where(filled, 18.0, np.nan)), "width", "cm-1"
+        ),
+        "misfit_height": described(
+            (("sample", "misfit_band"), np.where(filled, 0.03, np.nan)), "height", "1"
+        ),
         "misfit_score": described((("sample", "misfit_band"), np.where(filled, 41.0, np.nan)), "score", "1"),
         "variance_inflation": described(("component", np.linspace(1.1, 90, k)), "variance inflation", "1"),
         "selectivity": described(("component", np.linspace(0.95, 0.1, k)), "selectivity", "1"),
-        "confused_with": described(("component", [""] * (k - 1) + [names[0]]), "most easily confused with", "1"),
+        "confused_with": described(
+            ("component", [""] * (k - 1) + [names[0]]), "most easily confused with", "1"
+        ),
         "condition_index": described(((), 12.3), "condition index", "1"),
     }
     if labels is None:
@@ -151,15 +164,21 @@ def build_conditioning(noise=True):
             "variance_proportion": described(
                 (("term", "component"), np.full((k + 2, k), 1 / (k + 2))), "variance proportion", "1"
             ),
-            "variance_inflation": described(("component", np.linspace(1.0, 60, k)), "variance inflation", "1"),
+            "variance_inflation": described(
+                ("component", np.linspace(1.0, 60, k)), "variance inflation", "1"
+            ),
             "selectivity": described(("component", np.linspace(1.0, 0.13, k)), "selectivity", "1"),
             "spectral_angle": described((("component", "component_2"), angle), "spectral angle", "degree"),
             "detection_limit": described(("component", limit), "detection limit", "g/L"),
             "confused_with": described(("component", ["", "", "", "isopropanol"]), "confused with", "1"),
-            "pure_signal": described((("component", "wavenumber"), pure), "signal per unit concentration", "L/g"),
+            "pure_signal": described(
+                (("component", "wavenumber"), pure), "signal per unit concentration", "L/g"
+            ),
             "net_signal": described((("component", "wavenumber"), 0.7 * pure), "net analyte signal", "L/g"),
             "verdict": described(((), "doubtful"), "verdict", "1"),
-            "reason": described(((), "water is hardly told apart from isopropanol (index 34)"), "reason", "1"),
+            "reason": described(
+                ((), "water is hardly told apart from isopropanol (index 34)"), "reason", "1"
+            ),
         },
         coords={
             "component": ("component", names),

@@ -19,7 +19,7 @@ def significant(value: float, digits: int = 3) -> str:
     ('0.0123', '1230', '2.50e-07')
     """
     if not math.isfinite(value):
-        return ABSENT
+        return to_step(value, 1.0, size=1.0)
     if value == 0:
         return "0"
     return to_step(value, 10.0 ** (math.floor(math.log10(abs(value))) - digits + 1), size=abs(value))

@@ -102,11 +102,14 @@
     Plotly.react(plot, traces, layout, config);
     plot.classList.add("drawn");
   };
-  const visible = () => all(".plot").filter(plot => plot.offsetParent !== null);
+  const hidden = plot => { const sample = plot.closest("details.sample"); return sample && !sample.open; };
   all("details.sample").forEach(details => details.addEventListener("toggle", () => {
     if (details.open) all(".plot:not(.drawn)", details).forEach(plot => draw(plot));
   }));
-  const redraw = light => visible().forEach(plot => draw(plot, light));
+  const redraw = light => all(".plot").forEach(plot => {
+    // A closed sample is drawn anew when it is opened
+    if (hidden(plot)) plot.classList.remove("drawn"); else draw(plot, light);
+  });
   dark.addEventListener("change", () => redraw(false));
   let waiting = 0;
   addEventListener("resize", () => { clearTimeout(waiting); waiting = setTimeout(() => redraw(false), 150); });
@@ -205,6 +208,6 @@
     });
   }));
 
-  visible().forEach(plot => draw(plot));
+  redraw(false);
   follow();
 })();
