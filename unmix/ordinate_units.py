@@ -11,7 +11,7 @@ import numpy as np
 
 from unmix.errors import UnitError
 from unmix.kernels import FloatArray
-from unmix.units import plain
+from unmix.units import plain, split_per
 
 #: spellings shown when an ordinate unit is not understood
 ORDINATE_ACCEPTED = (
@@ -198,7 +198,7 @@ _LENGTH = {"cm": "cm", "m": "m", "mm": "mm", "um": "um", "km": "km", "metre": "m
            "centimetre": "cm", "centimeter": "cm"}  # fmt: skip
 _AMOUNT = {"mol": "mol", "mmol": "mmol", "umol": "umol", "nmol": "nmol", "mole": "mol", "moles": "mol",
            "micromol": "umol", "micromole": "umol", "micromoles": "umol", "millimol": "mmol", "nanomol": "nmol",
-           "g": "g", "mg": "mg", "ug": "ug", "kg": "kg", "gram": "g", "ppm": "ppm", "ppb": "ppb"}  # fmt: skip
+           "g": "g", "mg": "mg", "ug": "ug", "kg": "kg", "gram": "g", "ppm": "ppm", "ppb": "ppb", "fraction": "fraction"}  # fmt: skip
 _VOLUME = {"l": "L", "litre": "L", "liter": "L", "ml": "mL", "ul": "uL", "dl": "dL", "dm": "dm"}
 _MOLAR = {"M": "mol/L", "mM": "mmol/L", "uM": "umol/L", "nM": "nmol/L"}
 _UNIT = re.compile(r"\s*(?:(?P<word>[A-Za-z\u00b5\u03bc]+)|(?P<one>1(?=\s*/))|(?P<open>\()|(?P<close>\))|(?P<over>/)|"
@@ -297,7 +297,7 @@ def _per(powers: dict[str, int]) -> str | None:
     if len(upper) != 1 or len(lower) > 1 or len(upper) + len(lower) != len(named):
         return None
     amount = f"{upper[0]}/{lower[0]}" if lower else upper[0]
-    if not lower and upper[0] not in (*_MOLAR.values(), "ppm", "ppb"):
+    if not lower and upper[0] not in (*_MOLAR.values(), "ppm", "ppb", "fraction"):
         return None
     return amount if path == "cm" else f"{amount} {path}"
 
@@ -349,3 +349,21 @@ def settle(values: FloatArray, unit: OrdinateUnit, text: str) -> tuple[FloatArra
             return values / 100, notes
         notes.append(f"the header says '{text}', a fraction, but some values reach {top:.4g}; taken as fractions")
     return unit.convert(values), notes
+
+
+_WRITTEN = {"absorbance": "ABSORBANCE", "transmittance": "TRANSMITTANCE", "reflectance": "REFLECTANCE",
+            "intensity": "ARBITRARY UNITS"}  # fmt: skip
+
+
+def ordinate_text(quantity: str, per: str = "") -> str:
+    """The ordinate unit to write into a file, which :func:`ordinate_unit` reads back.
+
+    Examples
+    --------
+    >>> ordinate_text("absorptivity", "umol/mol m")
+    '(umol/mol)-1 m-1 (base 10)'
+    """
+    if quantity != "absorptivity" or not per:
+        return _WRITTEN.get(quantity, quantity)
+    amount, path = split_per(per)
+    return f"({amount})-1 {path or 'cm'}-1 (base 10)"

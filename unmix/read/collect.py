@@ -49,11 +49,11 @@ def files_of(source: Source) -> tuple[list[Path], bool, list[str]]:
         notes: list[str] = []
         for part in source:
             more, _, left = files_of(part)
-            paths += [path for path in more if path not in paths]
+            paths += more
             notes += left
         if not paths:
             raise ReadError("the list of files is empty")
-        return paths, True, notes
+        return list(dict.fromkeys(paths)), True, notes
     path = Path(source)
     if path.is_dir() and path.suffix != ".zarr":
         return _of_folder(path)
@@ -76,7 +76,8 @@ def _of_folder(folder: Path) -> tuple[list[Path], bool, list[str]]:
     if not paths:
         raise ReadError("the folder holds no file with spectra", path=str(folder),
                         accepted=f"the suffixes looked for are {', '.join(SUFFIXES)}")  # fmt: skip
-    others = [entry.name for entry in entries if entry not in paths and entry.is_file()]
+    taken = set(paths)
+    others = [entry.name for entry in entries if entry not in taken and entry.is_file()]
     return paths, True, [f"{listed(others)} in the folder {folder.name} were left alone"] if others else []
 
 
@@ -178,6 +179,14 @@ def same_axis(one: FloatArray, other: FloatArray) -> bool:
     if one.size == 1:
         return bool(one[0] == other[0])
     return bool((np.abs(one - other) <= SAME_AXIS * np.gradient(one)).all())
+
+
+def same_kind(one: Found | xr.DataArray, other: Found | xr.DataArray) -> bool:
+    """Whether two items can share an array as they are."""
+    if not (isinstance(one, Found) and isinstance(other, Found)):
+        return False
+    alike = (one.dim, one.quantity, one.per) == (other.dim, other.quantity, other.per)
+    return alike and same_axis(one.axis, other.axis)
 
 
 def _common(found: Sequence[Found]) -> FloatArray:

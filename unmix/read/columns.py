@@ -136,7 +136,7 @@ def _naming(
         unit, written = ordinate_of(written or layout.metadata.ordinate, options, findings)
         if unit is None and not written:
             raise ReadError("what the numbers are is not stated", path=findings.file,
-                            accepted="give it as quantity=, such as quantity='absorbance' or quantity='%T'")  # fmt: skip
+                            accepted="give it as quantity=, for example 'absorbance' or '%T'")  # fmt: skip
         units = [unit] * len(labels)
     elif len(stated) < sum(filled):
         without = [label for label, unit in zip(labels, units, strict=True) if unit is None and label]
@@ -166,12 +166,15 @@ def _keep(coords: dict[str, list[Any]], heading: str, cells: Sequence[str]) -> N
     """Keep a row or column of facts as a coordinate: numbers where all are numbers, else texts."""
     entries: list[Any] = [read_cell(cell.strip()) for cell in cells]
     numbers = [_float(cell) for cell in entries]
-    unit = path_heading(heading)
     name = heading.replace("/", "_").strip()
     if all(number is not None for number in numbers):
         entries = numbers
-    if unit is not None and all(number is not None and number > 0 for number in numbers):
-        name, entries = "path_length", [length_in_cm(f"{number!r} {unit}") for number in numbers]
+    unit = path_heading(heading)
+    if unit is not None:
+        try:
+            name, entries = "path_length", [length_in_cm(f"{cell} {unit}") for cell in cells]
+        except UnitError:
+            name = heading
     while name in _TAKEN or name in coords:
         name += "_"
     coords[name] = entries

@@ -105,15 +105,13 @@ def _unit(text: str) -> OrdinateUnit | None:
 
 
 def path_heading(text: str) -> str | None:
-    """The length unit in the heading of a column of path lengths; None where it is no such column.
+    """The length unit in the heading of a row or column of path lengths; None where it is no such heading.
 
-    ``path_length`` alone is in centimetres, as the data contract has it.
+    The unit is empty where it stands beside each number instead.
     """
     word = plain(text).replace("_", " ")
-    match = re.fullmatch(r"(?:optical )?(?:cell )?path ?(?:length)?\s*[(\[/,]?\s*(cm|mm|um|m)?\s*[)\]]?", word)
-    if match and (match.group(1) or word == "path length"):
-        return match.group(1) or "cm"
-    return None
+    match = re.fullmatch(r"(?:optical |cell )?path ?(?:length)?\s*[(\[/,]?\s*(cm|mm|um|m)?\s*[)\]]?", word)
+    return (match.group(1) or "") if match else None
 
 
 _AXIS_CELL = re.compile(r"\s*[Xx]?\s*([-+]?\d+(?:[.,]\d+)?(?:[eE][-+]?\d+)?)\s*_?\s*([^\d\s].*)?\s*")

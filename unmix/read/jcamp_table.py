@@ -107,11 +107,11 @@ def read_table(entry: Entry, header: Header, findings: Findings, budget: Budget)
             more = f"; {len(raw.faults) - 1} more lines fail" if len(raw.faults) > 1 else ""
             findings.failed(text + more, line)
         x = _placed(raw, header, x_factor, findings)
-        y = raw.values * y_factor
+        y = _scaled(raw.values, y_factor)
         forms = " ".join(sorted(raw.forms))
     elif re.match(r"\((XY|X,?Y)", form):
         x, y = decode_pairs(entry.rest, path=findings.file, line=entry.line + 1)
-        x, y = x * x_factor, y * y_factor
+        x, y = _scaled(x, x_factor), _scaled(y, y_factor)
         _count(y.size, header, findings, entry.line)
         _ends(x, header, findings)
         forms = "pairs"
@@ -128,6 +128,12 @@ def _factor(number: Number | None, name: str, findings: Findings) -> float:
     if number.value == 0:
         raise ReadError(f"##{name}= is zero", path=findings.file, line=number.line)
     return number.value
+
+
+def _scaled(values: FloatArray, factor: float) -> FloatArray:
+    """Values times a factor; a factor such as 0.0001 divides by 10000, which gives the decimal that was meant."""
+    inverse = float(np.rint(1 / factor))
+    return values / inverse if inverse and 1 / inverse == factor else values * factor
 
 
 def _count(n: int, header: Header, findings: Findings, line: int) -> None:

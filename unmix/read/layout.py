@@ -105,12 +105,13 @@ def _before(rows: Sequence[Row], width: int) -> tuple[Metadata, list[list[str]]]
     headings: list[list[str]] = []
     for _, cells in reversed(rows):
         fitted = _fitted(cells, width)
-        if fitted is None or (width > 2 and sum(bool(cell.strip()) for cell in fitted) < 2):
+        if fitted is None or (width > 2 and not any(fitted[2:])):
             break
         headings.insert(0, fitted)
-        if width == 2 and not axis_heading(fitted[0]) and len(headings) > 1:
-            headings.pop(0)
-            break
+    if width == 2:
+        # Two cells may as well be a word of the file and its value; only a line of names makes headings of them
+        named = [i for i, row in enumerate(headings) if row[0].lower() in LABEL_WORDS]
+        headings = headings[named[0] if named else -1 :]
     metadata = Metadata()
     for _, cells in rows[: len(rows) - len(headings)]:
         take_line(metadata, " ".join(cell.strip() for cell in cells if cell.strip()), list(cells))

@@ -9,6 +9,7 @@ R. S. McDonald and P. A. Wilks, JCAMP-DX: a standard form for exchange of infrar
 form, Appl. Spectrosc. 42 (1988) 151-162, section 4.5 and Table VII.
 """
 
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass, field
 
 import numpy as np
@@ -197,31 +198,28 @@ def _values(table: bytes, path: str, line: int) -> _Values:
         at = int(np.argmax(kind == _WRONG))
         raise ReadError(f"the character '{chr(text[at])}' does not belong in a data table", path=path,
                         line=line + int(np.searchsorted(newline, at)))  # fmt: skip
-    odd = _mark_exponents(text, kind)
-    inside = (kind >= _INSIDE) & (kind <= _DOT)
-    apart = (kind == _BLANK) | (kind == _MISSING)
-    starts = kind >= _SIGN
-    starts[1:] |= inside[1:] & apart[:-1]
-    starts[:1] |= inside[:1]
-    goes_on = inside & ~starts
-    ends = kind != _BLANK
-    ends[:-1] &= ~goes_on[1:]
-    start, end = np.flatnonzero(starts), np.flatnonzero(ends) + 1
+    _mark_exponents(text, kind)
+    start, end = _cut(kind)
     if not start.size:
         raise ReadError("the data table is empty", path=path, line=line)
     at_line = np.searchsorted(newline, start)
     leads = kind[start]
     length = end - start
     number = _LEAD[text[start]]
+    unit = np.ones(start.size)
     by_float = length > _EXACT_DIGITS
-    by_float[np.searchsorted(start, odd, side="right") - 1] = True
+    dots = np.flatnonzero(kind == _DOT)
+    dotted = np.searchsorted(start, dots, side="right") - 1
+    unit[dotted] = 10.0 ** (dots + 1 - end[dotted])
+    by_float[dotted] = True
+    scaled = np.searchsorted(start, np.flatnonzero(kind == _INSIDE), side="right") - 1
+    by_float[scaled] = True
     exact = np.where(by_float, 0, length)
     for place in range(1, int(exact.max(initial=0))):
         longer = np.flatnonzero(exact > place)
         number[longer] = number[longer] * 10 + (text[start[longer] + place] - 48.0)
     number *= _VALUE_SIGN[text[start]]
     number[leads == _MISSING] = np.nan
-    unit = np.ones(start.size)
     leads[leads == _DOT] = _DIGIT
     found = _Values(leads, number, at_line, unit)
     _no_such((leads == _SIGN) & (length == 1), found, path, line, "a sign stands without a number")
@@ -233,13 +231,25 @@ def _values(table: bytes, path: str, line: int) -> _Values:
         except ValueError:
             raise ReadError(f"'{word[:40].decode('latin-1')}' is not a number", path=path,
                             line=line + int(at_line[i])) from None  # fmt: skip
-        unit[i] = last_digit(word)
+    for i in np.unique(scaled):
+        unit[i] = last_digit(table[start[i] : end[i]])
     _no_such(np.isinf(number), found, path, line, "a number is too large")
     return found
 
 
-def _mark_exponents(text: IntArray, kind: IntArray) -> IntArray:
-    """Mark exponents as inside their number; positions of all marks and decimal points, in order.
+def _cut(kind: IntArray) -> tuple[IntArray, IntArray]:
+    """Where every value starts and ends."""
+    inside = (kind >= _INSIDE) & (kind <= _DOT)
+    starts = kind >= _SIGN
+    starts[1:] |= inside[1:] & ((kind == _BLANK) | (kind == _MISSING))[:-1]
+    starts[:1] |= inside[:1]
+    ends = kind != _BLANK
+    ends[:-1] &= ~(inside & ~starts)[1:]
+    return np.flatnonzero(starts), np.flatnonzero(ends) + 1
+
+
+def _mark_exponents(text: IntArray, kind: IntArray) -> None:
+    """Mark exponents as inside their number.
 
     ``E`` is also the packed digit 5. It is an exponent where a sign and a digit follow it, as the standard asks, or,
     in a table without any other packed digit, where digits follow it directly behind a decimal fraction.
@@ -255,7 +265,6 @@ def _mark_exponents(text: IntArray, kind: IntArray) -> IntArray:
         fraction = np.array([_is_fraction(text, kind, int(i)) for i in bare], dtype=bool)
         if bare.size and fraction.all():
             kind[bare] = _INSIDE
-    return np.flatnonzero((kind == _DOT) | (kind == _INSIDE))
 
 
 def _is_fraction(text: IntArray, kind: IntArray, end: int) -> bool:
@@ -333,3 +342,67 @@ def _y_checks(values: FloatArray, starts: IntArray, checked: BoolArray, lines: I
         (int(lines[checked][i]), f"the line starts with {again[i]:.15g} but the line before ends with "
          f"{before[i]:.15g} (Y-check)") for i in wrong
     ]  # fmt: skip
+
+
+def pack(abscissae: Sequence[str], ordinates: FloatArray, *, width: int) -> Iterator[str]:
+    """Write ordinates as the lines of a DIFDUP table.
+
+    Parameters
+    ----------
+    abscissae : sequence of str
+        The text of every abscissa, of which the first of each line is printed.
+    ordinates : ndarray, shape (points,)
+        Rounded to whole numbers; NaN becomes ``?``.
+    width : int
+        The longest line.
+
+    Yields
+    ------
+    str
+        Lines; each starts with the last ordinate of the line before as the Y-check, and a line with nothing but
+        that check closes the table.
+
+    Examples
+    --------
+    >>> list(pack(["1", "2", "3", "4"], np.array([1.0, 2.0, 3.0, 3.0]), width=80))
+    ['1AJT%', '4C']
+    """
+    whole = [None if np.isnan(y) else int(y) for y in np.rint(ordinates)]
+    n = len(whole)
+    words = [_packed(whole[i], whole[i - 1] if i else None) for i in range(n)]
+    i = 0
+    ends_in_difference = False
+    while i < n or ends_in_difference:
+        at = i - 1 if ends_in_difference else i
+        line = abscissae[at] + _packed(whole[at], None)
+        i = at + 1
+        ends_in_difference = False
+        while i < n:
+            run = 1
+            while i + run < n and words[i + run] == words[i] and words[i][0] in _DIFFERENCES:
+                run += 1
+            piece = words[i] + (_coded(run, _DUP_CODES) if run > 1 else "")
+            if len(line) + len(piece) > width:
+                break
+            line += piece
+            ends_in_difference = words[i][0] in _DIFFERENCES
+            i += run
+        yield line
+
+
+def _packed(value: int | None, before: int | None) -> str:
+    if value is None:
+        return "?"
+    return _coded(value, _SQZ_CODES) if before is None else _coded(value - before, _DIF_CODES)
+
+
+def _coded(value: int, codes: dict[str, str]) -> str:
+    """A whole number whose sign and first digit are one letter."""
+    digits = str(abs(value))
+    return codes[f"-{digits[0]}" if value < 0 else digits[0]] + digits[1:]
+
+
+_SQZ_CODES = {str(digit): char for char, digit in _SQZ_DIGITS.items()}
+_DIF_CODES = {str(digit): char for char, digit in _DIF_DIGITS.items()}
+_DUP_CODES = {str(digit): char for char, digit in _DUP_DIGITS.items()}
+_DIFFERENCES = frozenset(_DIF_DIGITS)

@@ -21,7 +21,7 @@ from unmix.read.layout import Layout, find_layout
 from unmix.read.text import encoding_of, lines_of
 
 #: the layout is found from this many rows, or this many characters if that is more than a few rows
-_HEAD_ROWS, _HEAD_SIZE, _FEW = 400, 2**20, 8
+HEAD_ROWS, _HEAD_SIZE, _FEW = 400, 2**20, 8
 
 
 def read_table(path: Path, options: Options, *, file: str) -> list[Found]:
@@ -52,7 +52,7 @@ def read_table(path: Path, options: Options, *, file: str) -> list[Found]:
     for line in lines:
         start.append(line)
         size += len(line)
-        if len(start) >= _HEAD_ROWS or (size > _HEAD_SIZE and len(start) > _FEW):
+        if len(start) >= HEAD_ROWS or (size > _HEAD_SIZE and len(start) > _FEW):
             break
     head = list(table_lines(start))
     dialect = sniff(head, options.decimal, file=file)
