@@ -137,6 +137,7 @@ class Composition(Result):
 
     def __init__(self, data: xr.Dataset) -> None:
         super().__init__(data)
+        self._laid: dict[str, Any] = {}
         self.leading = tuple(str(dim) for dim in data["concentration"].dims if dim != "component")
         self.samples = labels_of(data["concentration"].transpose(*self.leading, "component"))
         self.files = self._texts("file")
@@ -147,41 +148,44 @@ class Composition(Result):
     def __len__(self) -> int:
         return len(self.samples)
 
-    def _flat(self, variable: xr.DataArray, last: Sequence[str] = ()) -> Any:
-        laid = variable.transpose(*self.leading, *last).values
-        return laid.reshape(len(self.samples), *laid.shape[len(self.leading) :])
+    def _flat(self, name: str, *last: str) -> Any:
+        """A variable with its leading dimensions as one, kept, because a page asks for it once a sample."""
+        if name not in self._laid:
+            laid = self.data[name].transpose(*self.leading, *last).values
+            self._laid[name] = laid.reshape(len(self.samples), *laid.shape[len(self.leading) :])
+        return self._laid[name]
 
     def _texts(self, name: str) -> list[str]:
         whole = set(self.leading)
         if name not in self.data.variables or set(self.data[name].dims) != whole:
             return [""] * len(self.samples)
-        return [str(text) for text in self._flat(self.data[name])]
+        return [str(text) for text in self._flat(name)]
 
     def per_sample(self, variable: str) -> FloatArray:
         """A variable along the samples, NaN when the result does not have it."""
         if variable not in self.data:
             return np.full(len(self), np.nan)
-        found: FloatArray = self._flat(self.data[variable]).astype(float)
+        found: FloatArray = self._flat(variable).astype(float)
         return found
 
     def table(self, variable: str) -> FloatArray:
         """A variable as (samples, components), NaN when the result does not have it."""
         if variable not in self.data:
             return np.full((len(self), len(self.components)), np.nan)
-        found: FloatArray = self._flat(self.data[variable], ["component"]).astype(float)
+        found: FloatArray = self._flat(variable, "component").astype(float)
         return found
 
     def detected(self) -> BoolArray:
         """Which amounts are above their critical level, as (samples, components)."""
         if "detected" in self.data:
-            return np.asarray(self._flat(self.data["detected"], ["component"]), dtype=bool)
+            return np.asarray(self._flat("detected", "component"), dtype=bool)
         return self.table("lower") > 0
 
     def curve(self, variable: str, sample: int) -> FloatArray:
         """A curve of one sample along the spectral axis, NaN when the result does not have it."""
         if variable not in self.data:
             return np.full(self.axis.size, np.nan)
-        return np.asarray(self._flat(self.data[variable], [self.dim])[sample], dtype=float)
+        return np.asarray(self._flat(variable, self.dim)[sample], dtype=float)
 
     def factors(self) -> FloatArray:
         """What the path length of each sample multiplies the signal of a unit amount with."""
@@ -203,7 +207,7 @@ class Composition(Result):
         names = ("position", "width", "height", "score")
         if any(f"misfit_{name}" not in self.data for name in names):
             return []
-        found = [self._flat(self.data[f"misfit_{name}"], ["misfit_band"])[sample] for name in names]
+        found = [self._flat(f"misfit_{name}", "misfit_band")[sample] for name in names]
         bands = [dict(zip(names, map(float, band), strict=True)) for band in zip(*found, strict=True)]
         known = [band for band in bands if np.isfinite(band["position"])]
         return sorted(known, key=lambda band: -abs(band["score"]))
