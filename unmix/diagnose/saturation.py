@@ -15,7 +15,7 @@ _PLATEAU = 0.7
 #: fewest channels of a plateau
 _FEWEST = 4
 
-#: with stray light s the highest absorbance is -log10 s; this far below it, s is 3% of the light
+#: how far below the plateau the straight line between amount and absorbance has its end
 _MARGIN = 1.5
 
 #: what tells a plateau from bands that happen to merge: noise on it this many times that elsewhere, since noise grows
@@ -30,9 +30,9 @@ def saturated(absorbance: FloatArray) -> tuple[BoolArray, FloatArray]:
     A spectrum is saturated when the widest run of channels above 70% of its maximum holds mostly channels above
     95% of the level of its top, which no line shape does, and when this plateau is rougher than the rest of the
     spectrum or quite level. Then everything within 1.5 absorbance units of the plateau (or half of it, if that is
-    less) is left out: with stray light as the cause, a share s of the light, the plateau lies at -log10 s, and
-    1.5 units below it the measured absorbance is still wrong by 3% of the light (common practice, no source, for
-    the margin).
+    less) counts as bent: with stray light as the cause, a share s of the light, the plateau lies at -log10 s, and 1.5
+    units below it the measured absorbance is still wrong by 3% of the light (common practice, no source, for the
+    margin).
 
     Parameters
     ----------
@@ -47,7 +47,6 @@ def saturated(absorbance: FloatArray) -> tuple[BoolArray, FloatArray]:
     """
     filled = np.where(np.isfinite(absorbance), absorbance, -np.inf)
     top = filled.max(axis=1)
-    bent = np.zeros(absorbance.shape, dtype=bool)
     plateau = np.full(absorbance.shape[0], np.nan)
     for i in np.flatnonzero(np.isfinite(top) & (top >= _DARK)):
         level = _plateau(filled[i], _FEWEST)
@@ -56,8 +55,8 @@ def saturated(absorbance: FloatArray) -> tuple[BoolArray, FloatArray]:
             level = _plateau(median_filter(filled[i], 5, mode="nearest"), 2 * _FEWEST)
         if level is not None:
             plateau[i] = level
-            bent[i] = filled[i] >= level - min(_MARGIN, 0.5 * level)
-    return bent, plateau
+    end = plateau - np.minimum(_MARGIN, 0.5 * plateau)
+    return filled >= np.where(np.isfinite(end), end, np.inf)[:, None], plateau
 
 
 def _plateau(spectrum: FloatArray, fewest: int) -> float | None:

@@ -54,6 +54,7 @@ def analyse(
     done = 0
     for rows, shared in _patterns(weight):
         used = shared != 0
+        answer.used[rows] = used
         if int(used.sum()) < k + free.shape[1]:
             done += rows.size
             continue

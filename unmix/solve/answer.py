@@ -6,7 +6,7 @@ from typing import Any
 import numpy as np
 
 from unmix.diagnose.residual import Bands
-from unmix.kernels import FloatArray
+from unmix.kernels import BoolArray, FloatArray
 
 
 @dataclass(frozen=True)
@@ -35,7 +35,7 @@ class Answer:
     """Arrays of the answer, one row a spectrum, NaN where a spectrum could not be answered.
 
     Shapes: (spectra, components) for the amounts, (spectra, channels) for curves, (spectra,) for the rest.
-    Amounts are per unit path; ``bands`` holds positions and widths in channels.
+    ``used`` tells the channels that the last fit of a spectrum rests on. Amounts are per unit path; ``bands`` holds positions and widths in channels.
     """
 
     concentration: FloatArray
@@ -56,6 +56,7 @@ class Answer:
     misfit_limit: FloatArray
     residual_growth: FloatArray
     stray_light: FloatArray
+    used: BoolArray
     bands: list[Bands | None]
     groups: list[list[tuple[float, list[int]]]]
 
@@ -64,10 +65,11 @@ class Answer:
         """All NaN, no bands."""
         shapes = dict.fromkeys(AMOUNTS, (n, k)) | dict.fromkeys(CURVES, (n, p)) | dict.fromkeys(FIGURES, (n,))
         arrays: dict[str, Any] = {name: np.full(shape, np.nan) for name, shape in shapes.items()}
-        return cls(**arrays, bands=[None] * n, groups=[[] for _ in range(n)])
+        return cls(**arrays, used=np.zeros((n, p), dtype=bool), bands=[None] * n, groups=[[] for _ in range(n)])
 
     def put(self, row: int, one: "Answer") -> None:
         """Replace a row by the only row of another answer."""
         for name in (*AMOUNTS, *CURVES, *FIGURES):
             getattr(self, name)[row] = getattr(one, name)[0]
+        self.used[row] = one.used[0]
         self.bands[row], self.groups[row] = one.bands[0], one.groups[0]

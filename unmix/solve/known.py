@@ -12,6 +12,7 @@ import xarray as xr
 from sklearn.base import BaseEstimator, MultiOutputMixin, RegressorMixin
 from sklearn.utils.validation import check_is_fitted, validate_data
 
+from unmix.diagnose.saturation import saturated
 from unmix.errors import InputError
 from unmix.kernels import FloatArray
 from unmix.kernels.linalg import polynomial_terms
@@ -160,7 +161,7 @@ class KnownSpectra(MultiOutputMixin, RegressorMixin, BaseEstimator):
         used: Any = None,
         *,
         pure_uncertainty: Any = 0.0,
-        plateau: Any = np.nan,
+        detect_saturation: bool = False,
         progress: Progress | None = None,
     ) -> Answer:
         """Amounts with intervals, limits, fit and misfit, as plain arrays.
@@ -172,8 +173,8 @@ class KnownSpectra(MultiOutputMixin, RegressorMixin, BaseEstimator):
             Channels that count; by default the finite ones.
         pure_uncertainty : float or array_like, shape (components,)
             Relative standard uncertainty of the pure spectra.
-        plateau : float or array_like, shape (spectra,)
-            Absorbance of the flat tops of saturated spectra, whose stray light then joins the fit; NaN for none.
+        detect_saturation : bool
+            Whether the spectra are absorbance, in which flat tops show saturation.
         progress : callable, optional
             Called with the number of spectra finished.
 
@@ -186,10 +187,10 @@ class KnownSpectra(MultiOutputMixin, RegressorMixin, BaseEstimator):
         counts = np.isfinite(spectra) if used is None else np.asarray(used, dtype=bool) & np.isfinite(spectra)
         counts = counts & np.isfinite(self.pure_).all(axis=0)
         noise = 1.0 if self.noise is None else np.asarray(self.noise, dtype=float)
-        light = Light(
-            models(self.noise_model, measured_as_transmittance=False),
-            np.broadcast_to(np.asarray(plateau, dtype=float), spectra.shape[:1]),
-        )
+        bent, plateau = np.zeros(spectra.shape, dtype=bool), np.full(spectra.shape[0], np.nan)
+        if detect_saturation:
+            bent, plateau = saturated(np.where(counts, spectra, np.nan))
+        light = Light(models(self.noise_model, measured_as_transmittance=False), bent, plateau)
         settings = Settings(self.level, self.nonnegative, known_noise=self.noise is not None)
         relative = np.broadcast_to(np.asarray(pure_uncertainty, dtype=float), (self.pure_.shape[0],))
         return solve(spectra, counts, noise, self.pure_.T, self._free, relative, settings, light, progress)

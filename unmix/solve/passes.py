@@ -46,11 +46,14 @@ class Light:
     ----------
     model : str
         One of ``NOISE_MODELS``.
+    bent : ndarray of bool, shape (spectra, channels)
+        Channels near a flat top, left out of the first fit.
     plateau : ndarray, shape (spectra,)
         Absorbance of a flat top; NaN without one.
     """
 
     model: str
+    bent: BoolArray
     plateau: FloatArray
 
 
@@ -97,11 +100,12 @@ def solve(
     Answer
     """
     weight = np.where(used, 1.0 / np.asarray(noise), 0.0)
+    straight = used & ~light.bent
     growth = _GROWTH[light.model]
     quiet = growth == 0 and not np.isfinite(light.plateau).any()
-    answer = analyse(y, weight, signal, free, pure_uncertainty, settings, progress if quiet else None)
-    answer.residual_growth[:] = _residual_growth(y, used, answer.fitted)
-    answer.stray_light[:] = 0.0
+    answer = analyse(y, np.where(straight, weight, 0.0), signal, free, pure_uncertainty, settings, progress if quiet else None)
+    answer.residual_growth[:] = _residual_growth(y, straight, answer.fitted)
+    answer.stray_light[:] = np.nan_to_num(10.0**-light.plateau)
     columns = np.hstack([free, signal])
     for i in range(y.shape[0]):
         stray = _stray_of(i, y, used, columns, answer, light) if np.isfinite(answer.noise_level[i]) else 0.0
@@ -134,7 +138,7 @@ def _again(
     relative = 10.0 ** ((1.0 if stray else growth) * dark)
     row = weight / relative
     # the level of a clear channel, from the first fit, tells where the light is too weak
-    clear = answer.noise_level[i] / np.median(relative[weight != 0])
+    clear = answer.noise_level[i] / np.median(relative[answer.used[i]])
     too_dark = np.log(10.0) * clear * relative > _TOO_DARK
     if (row[~too_dark] != 0).sum() > columns.shape[1]:
         row = np.where(too_dark, 0.0, row)
@@ -157,7 +161,7 @@ def _stray_of(
     top = np.max(y[i], initial=0.0, where=np.isfinite(y[i]))
     if not flat and not (suspicious and top > _DARK_ENOUGH):
         return 0.0
-    keep = np.isfinite(y[i]) if flat else used[i]
+    keep = used[i]
     low = keep & (np.nan_to_num(y[i], nan=np.inf) < _STRAIGHT)
     if low.sum() < 2 * columns.shape[1]:
         low = keep

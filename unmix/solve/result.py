@@ -7,9 +7,8 @@ import xarray as xr
 
 from unmix.diagnose.conditioning import design_figures
 from unmix.diagnose.residual import Bands
-from unmix.diagnose.saturation import saturated
 from unmix.diagnose.verdict import Band, Evidence, Words, judge
-from unmix.kernels import BoolArray, FloatArray
+from unmix.kernels import FloatArray
 from unmix.kernels.linalg import polynomial_terms
 from unmix.solve.analysis import Progress
 from unmix.solve.answer import Answer
@@ -78,29 +77,25 @@ def assemble(
     """
     rows = np.asarray(rows_of(samples), dtype=np.float64)
     present = np.isfinite(rows)
-    bent, plateau = _bent(samples, rows)
     usable = np.isfinite(estimator.pure_).all(axis=0)
-    used = present & ~bent & usable
+    given = present & usable
     uncertainty = _relative_uncertainty(pure)
-    answer = estimator.analyse(rows, used, pure_uncertainty=uncertainty, plateau=plateau, progress=progress)
+    answer = estimator.analyse(rows, given, pure_uncertainty=uncertainty,
+                               detect_saturation=samples.attrs.get("quantity") == "absorbance", progress=progress)  # fmt: skip
     _per_path(answer, paths.factor)
     words = Words([str(c) for c in pure["component"].values], paths.amount_unit, SPECTRAL_UNITS[spectral_dim(samples)])
     lost_light = samples.attrs.get("measured_as") == "transmittance"
     judged = []
     for i in range(rows.shape[0]):
         missing = int((~present[i]).sum())
-        evidence = _evidence(answer, i, used[i], samples, estimator, paths)
-        evidence.plateau = float(plateau[i])
-        evidence.channels_saturated = int(bent[i].sum()) + (missing if lost_light else 0)
+        evidence = _evidence(answer, i, samples, estimator, paths)
+        bent = answer.stray_light[i] > 0
+        evidence.plateau = -float(np.log10(answer.stray_light[i])) if bent else np.nan
+        evidence.channels_saturated = int((given[i] & ~answer.used[i]).sum() if bent else 0)
+        evidence.channels_saturated += missing if lost_light else 0
         evidence.channels_missing = 0 if lost_light else missing
         judged.append((*judge(evidence, words), evidence))
-    return _dataset(samples, pure, estimator, paths, answer, used, judged)
-
-
-def _bent(samples: xr.DataArray, rows: FloatArray) -> tuple[BoolArray, FloatArray]:
-    if samples.attrs.get("quantity") != "absorbance":
-        return np.zeros(rows.shape, dtype=bool), np.full(rows.shape[0], np.nan)
-    return saturated(rows)
+    return _dataset(samples, pure, estimator, paths, answer, judged)
 
 
 def _relative_uncertainty(pure: xr.DataArray) -> FloatArray:
@@ -121,11 +116,11 @@ def _per_path(answer: Answer, factor: FloatArray) -> None:
 
 
 def _evidence(
-    answer: Answer, i: int, used: BoolArray, samples: xr.DataArray, estimator: "KnownSpectra", paths: Paths
+    answer: Answer, i: int, samples: xr.DataArray, estimator: "KnownSpectra", paths: Paths
 ) -> Evidence:
     axis = np.asarray(samples[spectral_dim(samples)].values, dtype=float)
     n_terms = estimator.pure_.shape[0] + (0 if estimator.baseline is None else estimator.baseline + 1)
-    noise = estimator.noise
+    noise, used = estimator.noise, answer.used[i]
     concentration = answer.concentration[i]
     with np.errstate(invalid="ignore"):
         detected = concentration > answer.critical_level[i]
@@ -167,7 +162,6 @@ def _dataset(
     estimator: "KnownSpectra",
     paths: Paths,
     answer: Answer,
-    used: BoolArray,
     judged: list[tuple[str, str, Evidence]],
 ) -> xr.Dataset:
     dim = spectral_dim(samples)
@@ -179,7 +173,7 @@ def _dataset(
         array = np.asarray(values)
         return ((*leading, *more), array.reshape(*shape, *array.shape[1:]), {"long_name": name, "units": units})
 
-    evidence = [e for _, _, e in judged]
+    evidence, used = [e for _, _, e in judged], answer.used
     data: dict[str, Any] = {
         name: over(getattr(answer, name), "component", name=text, units=paths.amount_unit)
         for name, text in _AMOUNTS.items()
