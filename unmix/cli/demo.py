@@ -27,7 +27,7 @@ _TRUTH = "truth.csv"
 
 def command(
     name: Annotated[
-        str | None, typer.Argument(metavar="[NAME]", help="The set to run; none lists them all.")
+        str | None, typer.Argument(metavar="NAME", help="The set to run; none lists them all.")
     ] = None,
     csv: options.Csv = None,
     xlsx: options.Xlsx = None,

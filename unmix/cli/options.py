@@ -13,7 +13,7 @@ from unmix.errors import InputError
 
 Sources = Annotated[
     list[str],
-    typer.Argument(metavar="SAMPLES...", help="Spectrum files, folders or patterns such as 'runs/*.jdx'."),
+    typer.Argument(metavar="SAMPLES", help="Spectrum files, folders or patterns such as 'runs/*.jdx'."),
 ]
 Pure = Annotated[
     list[str],
@@ -92,6 +92,22 @@ PureQuantity = Annotated[
 PureUnit = Annotated[
     str | None,
     typer.Option("--pure-unit", metavar="UNIT", help="Axis unit of the pure spectra, if unsaid."),
+]
+Decimal = Annotated[
+    str | None,
+    typer.Option("--decimal", metavar="MARK", help="Decimal mark of a table, '.' or ',', if it is unclear."),
+]
+Orientation = Annotated[
+    str | None,
+    typer.Option("--orientation", metavar="WORD", help="Spectra in columns or rows of a table, if unclear."),
+]
+Sheet = Annotated[
+    str | None,
+    typer.Option("--sheet", metavar="NAME", help="Sheet of a workbook, where several are filled."),
+]
+Checks = Annotated[
+    str,
+    typer.Option("--checks", metavar="WORD", help="What a failed check of a JCAMP-DX file does: error or warn."),
 ]
 PathLength = Annotated[
     str | None,

@@ -1,9 +1,11 @@
 """Files to answers: samples that share an axis are quantified together, one that fails does not stop the others."""
 
 import json
+import math
 from collections import Counter
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
+from pathlib import Path
 from typing import Any
 
 import numpy as np
@@ -11,9 +13,11 @@ import xarray as xr
 
 import unmix
 from unmix.cli.terminal import Tick, progress
-from unmix.errors import InputError, UnmixError
+from unmix.errors import NAMED, InputError, UnmixError
 from unmix.read import read_each
+from unmix.solve.options import check_baseline, check_level, check_noise
 from unmix.spectra import as_pure, spectral_dim
+from unmix.units import length_in_cm
 
 
 @dataclass(frozen=True)
@@ -63,30 +67,45 @@ def quantify_files(
     UnmixError
         When no sample could be answered.
     """
-    arrays, refused = read_each(list(sources), unit=unit, quantity=quantity)
+    _check(settings)
+    # A single path keeps its own error; of many, the bad ones are set aside
+    source: Any = sources[0] if len(sources) == 1 else list(sources)
+    arrays, refused = read_each(source, unit=unit, quantity=quantity)
     arrays = _told_apart(arrays)
     order = [entry for one in arrays for entry in _names(one)]
+    total = sum(math.prod(array.shape[:-1]) for array in arrays)
     results: list[xr.Dataset] = []
-    first: UnmixError | None = None
     with progress("quantify") as tick:
         done = 0
         for group in _groups(arrays):
             together = _joined(group)
             try:
-                results.append(_quantify(together, pure, settings, tick, done, len(order)))
-            except UnmixError as error:
-                first = first or error
+                results.append(_quantify(together, pure, settings, tick, done, total))
+            except UnmixError:
                 results += _one_by_one(group, pure, settings, refused)
-            done += together.shape[0]
+            done += math.prod(together.shape[:-1])
     if not results:
-        reasons = list(dict.fromkeys(refused.values()))
-        if first is not None and len(reasons) == 1:
-            raise first
-        told = "; ".join(f"{name}: {reason}" for name, reason in list(refused.items())[:5])
-        raise InputError(f"none of the {len(refused)} samples could be answered ({told})")
+        raise InputError(_all_refused(refused))
     if refused:
         results[0] = results[0].assign_attrs(refused=json.dumps(refused))
     return Run(results, order, refused)
+
+
+def _check(settings: dict[str, Any]) -> None:
+    """Refuse options that no sample could be answered with, so that no file is blamed for them."""
+    check_baseline(settings.get("baseline", 1))
+    check_level(settings.get("level", 0.95))
+    check_noise(settings.get("noise"))
+    if settings.get("path_length") is not None:
+        length_in_cm(settings["path_length"], name="--path-length")
+
+
+def _all_refused(refused: Mapping[str, str]) -> str:
+    if len(refused) == 1:
+        return "; ".join(f"{name}: {reason}" for name, reason in refused.items())
+    told = "; ".join(f"{name}: {reason}" for name, reason in list(refused.items())[:NAMED])
+    more = f"; and {len(refused) - NAMED} more" if len(refused) > NAMED else ""
+    return f"none of the {len(refused)} samples could be answered ({told}{more})"
 
 
 def _quantify(
@@ -108,13 +127,15 @@ def _one_by_one(
                 unmix.quantify(single, pure, **settings)
                 answered.append(single)
             except UnmixError as error:
-                label, file = _names(single)[0]
+                label, file = (_names(single) or [(f"{array.dims[0]} {i + 1}", "")])[0]
                 refused[f"{file}: {label}" if array.shape[0] > 1 and file else file or label] = str(error)
     return [unmix.quantify(_joined(answered), pure, **settings)] if answered else []
 
 
 def _names(array: xr.DataArray) -> list[tuple[str, str]]:
-    """Label and file of each spectrum."""
+    """Label and file of each spectrum of a set; nothing for an image, whose spectra have places instead."""
+    if array.ndim != 2:
+        return []
     n = array.shape[0]
     label, file = (
         [str(text) for text in array[name].values] if name in array.coords else [""] * n
@@ -124,16 +145,17 @@ def _names(array: xr.DataArray) -> list[tuple[str, str]]:
 
 
 def _told_apart(arrays: Sequence[xr.DataArray]) -> list[xr.DataArray]:
-    """The same spectra, a label that several files use followed by its file."""
-    named = [_names(array) for array in arrays]
-    files_of = Counter(label for label, _ in {entry for names in named for entry in names})
-    return [
-        array.assign_coords(
-            label=(array.dims[0], [f"{label} [{file}]" if files_of[label] > 1 else label or file
-                                   for label, file in names])
-        )
-        for array, names in zip(arrays, named, strict=True)
-    ]  # fmt: skip
+    """The same spectra, a label that spectra on several axes share followed by its file."""
+    uses = Counter(label for array in arrays for label, _ in _names(array))
+    told = []
+    for array in arrays:
+        names = _names(array)
+        if any(uses[label] > 1 for label, _ in names):
+            labels = [f"{label} ({Path(file).stem})" if uses[label] > 1 else label for label, file in names]
+            told.append(array.assign_coords(label=(array.dims[0], labels)))
+        else:
+            told.append(array)
+    return told
 
 
 def _groups(arrays: Sequence[xr.DataArray]) -> list[list[xr.DataArray]]:
@@ -141,13 +163,21 @@ def _groups(arrays: Sequence[xr.DataArray]) -> list[list[xr.DataArray]]:
     groups: dict[Any, list[xr.DataArray]] = {}
     for array in arrays:
         dim = spectral_dim(array)
-        has_path = "path_length" in array.coords and bool(np.isfinite(array["path_length"].values).all())
-        key = (
-            dim, np.asarray(array[dim].values, dtype=float).tobytes(), tuple(sorted(map(str, array.coords))),
-            has_path, *(str(array.attrs.get(name)) for name in ("quantity", "per", "measured_as")),
-        )  # fmt: skip
-        groups.setdefault(key, []).append(array)
+        axis = np.asarray(array[dim].values, dtype=float).tobytes()
+        shared = tuple(str(array.attrs.get(name)) for name in ("quantity", "per", "measured_as"))
+        for part, has_path in _by_path(array):
+            key = (dim, axis, part.dims, tuple(sorted(map(str, part.coords))), has_path, shared)
+            groups.setdefault(key, []).append(part)
     return list(groups.values())
+
+
+def _by_path(array: xr.DataArray) -> list[tuple[xr.DataArray, bool]]:
+    """The spectra whose path length is known, and those whose is not."""
+    path = array.coords.get("path_length")
+    if path is None or path.dims != array.dims[:1]:
+        return [(array, path is not None)]
+    known = np.isfinite(np.asarray(path.values, dtype=float))
+    return [(array[mask], has) for mask, has in ((known, True), (~known, False)) if mask.any()]
 
 
 def _joined(group: Sequence[xr.DataArray]) -> xr.DataArray:
