@@ -58,6 +58,16 @@ def test_the_fit_is_kept_only_where_it_does_not_follow_from_the_rest(composition
     assert "fitted" in curves.of_sample(Composition(composition.drop_vars("pure_signal")), 0)
 
 
+def test_a_fit_over_channels_that_were_left_out_is_kept_apart_from_one_with_gaps(composition):
+    assert "gaps" in curves.of_sample(Composition(composition), 2)
+    whole = composition["fitted"].copy()
+    view = Composition(composition)
+    whole[2] = view.contributions(2).sum(axis=0) + view.curve("baseline", 2)
+    kept = curves.of_sample(Composition(composition.assign(fitted=whole)), 2)
+    assert "gaps" not in kept
+    assert "fitted" not in kept
+
+
 def test_an_amount_that_could_not_be_determined_is_null(composition):
     blank = composition["concentration"].copy()
     blank[0, 2] = np.nan

@@ -51,8 +51,27 @@ def test_the_noise_band_and_the_unexplained_band_are_marked(composition):
     bands = [shape for shape in shapes if shape.xref == "x"]
     assert {shape.yref for shape in bands} == {"y domain", "y2 domain"}
     assert (bands[0].x0, bands[0].x1) == (1722.0, 1758.0)
-    assert bands[-1].label.text == "1740 cm-1"
+    assert bands[-1].label.text == "1740"
     assert [shape for shape in fit_figure(composition, 0).layout.shapes if shape.xref == "x"] == []
+
+
+def test_no_line_is_drawn_across_a_gap_between_regions(composition):
+    axis = composition["wavenumber"]
+    cut = composition.sel(wavenumber=axis[(axis < 1000) | (axis > 2000)])
+    trace = by_curve(fit_figure(cut))["fitted"]
+    gap = np.flatnonzero(np.isnan(trace.y))
+    assert gap.size == 1
+    assert trace.y.size == cut.sizes["wavenumber"] + 1
+    assert (trace.x[gap[0] - 1], trace.x[gap[0] + 1]) == (998.0, 2002.0)
+
+
+def test_labels_of_neighbouring_bands_do_not_lie_over_each_other(composition):
+    position, score = composition["misfit_position"].copy(), composition["misfit_score"].copy()
+    width = composition["misfit_width"].copy()
+    position[1], score[1], width[1] = [1750.0, 1740.0], [20.0, 41.0], [18.0, 18.0]
+    near = composition.assign(misfit_position=position, misfit_score=score, misfit_width=width)
+    labels = [shape.label.text for shape in fit_figure(near, 1).layout.shapes if shape.label.text]
+    assert labels == ["1740"]
 
 
 def test_components_are_told_apart_by_colour_and_then_by_dash():

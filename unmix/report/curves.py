@@ -49,7 +49,12 @@ def thinned(values: FloatArray, axis: FloatArray, tolerance: float) -> Packed:
 
 def shared(view: Composition) -> dict[str, Any]:
     """What all samples of one result have in common: the axis and the pure spectra."""
-    found: dict[str, Any] = {"axis": plain(view.axis), "unit": view.axis_unit, "title": view.axis_title}
+    found: dict[str, Any] = {
+        "axis": plain(view.axis),
+        "unit": view.axis_unit,
+        "title": view.axis_title,
+        "breaks": view.breaks(),
+    }
     if "pure_signal" in view.data:
         found["pure"] = [plain(np.nan_to_num(signal)) for signal in view.signals()]
     return found
@@ -70,7 +75,9 @@ def of_sample(view: Composition, sample: int) -> dict[str, Any]:
         "amounts": [float(f"{amount:.8g}") if np.isfinite(amount) else None for amount in amounts],
     }
     follows = np.nansum(view.contributions(sample), axis=0) + baseline
-    apart = np.abs(follows - fitted)[inside]
+    apart = np.abs(follows - fitted)[np.isfinite(fitted)]
+    if not np.isfinite(fitted[~inside]).any():
+        found["gaps"] = True
     # Not "greater", so that a missing baseline counts as apart
     if apart.size and not apart.max() <= max(close, 1e-9):
         found["fitted"] = plain(fitted)

@@ -84,7 +84,7 @@ def _sample(view: Composition, number: int, sample: int, *, first: bool) -> Mark
     ) if drawn else None  # fmt: skip
     grid = element("div", element("div", _composition_table(view, sample), class_="scroll"),
                    element("div", verdict, _facts(view, sample)), class_="pair")  # fmt: skip
-    return element("details", summary, grid, _bands_table(view, sample), figure,
+    return element("details", summary, grid, figure, _bands_table(view, sample),
                    id=f"s{number}-{sample}", class_="sample", open=first)  # fmt: skip
 
 
@@ -171,7 +171,14 @@ def _facts(view: Composition, sample: int) -> Markup:
         ("Saturated, missing", f"{whole('channels_saturated')}, {whole('channels_missing')}"),
         ("Path factor", one("path_factor")),
     ]
+    if view.per_sample("stray_light")[sample] > 0:
+        facts.append(("Stray light", f"{100 * view.per_sample('stray_light')[sample]:.2g} %"))
     return element("dl", [element("div", element("dt", name), element("dd", text)) for name, text in facts])
+
+
+def _short(number: float, digits: int) -> str:
+    """A number without the noughts that only fill its digits up."""
+    return f"{number:.{digits}g}" if 1e-4 <= abs(number) < 1e6 else significant(number, digits)
 
 
 def _bands_table(view: Composition, sample: int) -> Markup | None:
@@ -182,7 +189,7 @@ def _bands_table(view: Composition, sample: int) -> Markup | None:
     titles = (f"Position ({unit})", f"Width ({unit})", "Height", "Score")
     head = [element("th", title, scope="col", class_="number") for title in titles]
     rows = [
-        element("tr", [element("td", significant(band[key], digits), class_="number")
+        element("tr", [element("td", _short(band[key], digits), class_="number")
                        for key, digits in (("position", 5), ("width", 2), ("height", 2), ("score", 3))])
         for band in bands
     ]  # fmt: skip

@@ -12,7 +12,6 @@ import xarray as xr
 
 from unmix.errors import InputError
 from unmix.report.markup import figure_text
-from unmix.report.numbers import significant
 from unmix.report.view import Composition, Result, results_of
 
 #: colours that colour-blind readers tell apart (after Okabe and Ito), readable on white and on black
@@ -98,8 +97,10 @@ def fit_traces(view: Composition, sample: int) -> list[dict[str, Any]]:
 
 def _trace(view: Result, values: Any, curve: str, name: str, yaxis: str, **line: Any) -> dict[str, Any]:
     legend = {"y": "legend", "y2": "legend2", "y3": "legend3"}[yaxis]
+    at = view.breaks()
+    x, y = np.insert(view.axis, at, view.axis[at]), np.insert(np.asarray(values, dtype=float), at, np.nan)
     return {
-        "type": "scatter", "mode": "lines", "x": view.axis, "y": values, "name": name, "yaxis": yaxis,
+        "type": "scatter", "mode": "lines", "x": x, "y": y, "name": name, "yaxis": yaxis,
         "legend": legend, "meta": {"curve": curve}, "line": line, "connectgaps": False,
     }  # fmt: skip
 
@@ -155,7 +156,7 @@ def fit_marks(view: Composition, sample: int) -> list[dict[str, Any]]:
     """What is drawn behind the curves of one sample: the noise band and the bands that are not explained."""
     marks = []
     noise = view.per_sample("noise_level")[sample]
-    small = {"size": 11}
+    labelled: list[float] = []
     if np.isfinite(noise) and noise > 0:
         marks.append({
             "type": "rect", "xref": "x domain", "yref": "y2", "x0": 0, "x1": 1, "layer": "below",
@@ -169,10 +170,14 @@ def fit_marks(view: Composition, sample: int) -> list[dict[str, Any]]:
                 "x1": band["position"] + half, "y1": 1, "layer": "below", "fillcolor": _WARN,
                 "line": {"width": 0},
             })  # fmt: skip
-        marks[-1]["label"] = {
-            "text": f"{significant(band['position'], 4)} {view.axis_unit}", "textposition": "top center",
-            "font": small,
-        }  # fmt: skip
+        # A label that would lie over another one is left out; the table below the figure has them all
+        if all(abs(band["position"] - other) > 0.09 * np.ptp(view.axis) for other in labelled):
+            labelled.append(band["position"])
+            marks[-1]["label"] = {
+                "text": f"{band['position']:.4g}",
+                "textposition": "top center",
+                "font": {"size": 11},
+            }
     return marks
 
 

@@ -21,6 +21,9 @@ _NEEDED = {
     "conditioning": ("variance_inflation", "selectivity"),
 }
 
+#: a step of the axis that is so many times the usual one separates two regions
+JUMP = 5.0
+
 #: verdicts from the most pressing to the least
 VERDICTS = ("unsupported", "doubtful", "supported")
 
@@ -89,6 +92,11 @@ class Result:
     def axis_unit(self) -> str:
         """Unit of the spectral axis."""
         return str(self.data[self.dim].attrs.get("units", "")) if self.dim else ""
+
+    def breaks(self) -> list[int]:
+        """Channels before which the axis jumps, as it does between regions: no line is drawn across."""
+        step = np.diff(self.axis)
+        return (np.flatnonzero(step > JUMP * np.median(step)) + 1).tolist() if step.size > 1 else []
 
     @property
     def falls(self) -> bool:

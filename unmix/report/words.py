@@ -62,7 +62,7 @@ def advice(view: Composition, sample: int) -> str:
         return "Measure a wider range, or choose regions in which the components differ."
     if not bands:
         return "Act on the reason given, then measure or run again."
-    where = f"{significant(bands[0]['position'], 4)} {view.axis_unit}"
+    where = f"{bands[0]['position']:.4g} {view.axis_unit}"
     if bands[0]["width"] > BROAD * np.ptp(view.axis):
         return f"The misfit near {where} is broad: try a baseline of higher order, then run again."
     if bands[0]["score"] < 0:
@@ -102,6 +102,6 @@ def curve_summary(view: Composition, sample: int) -> str:
     if np.isfinite(noise):
         parts.append(f"The standard deviation of the residual is {significant(noise, 2)}.")
     if bands:
-        where = ", ".join(significant(band["position"], 4) for band in bands[:3])
+        where = ", ".join(f"{band['position']:.4g}" for band in bands[:3])
         parts.append(f"Not explained: {where} {view.axis_unit}.")
     return " ".join(parts)

@@ -41,7 +41,7 @@
       signal.map(value => kept.amounts[j] === null ? NaN : kept.amounts[j] * value));
     const inside = residual.map(Number.isFinite);
     const fitted = kept.fitted ? unpack(kept.fitted) : inside.map((used, i) =>
-      used ? contributions.reduce((sum, curve) => sum + (Number.isFinite(curve[i]) ? curve[i] : 0), baseline[i]) : NaN);
+      used || !kept.gaps ? contributions.reduce((sum, curve) => sum + (Number.isFinite(curve[i]) ? curve[i] : 0), baseline[i]) : NaN);
     const left = unpack(kept.outside);
     let next = 0;
     const outside = inside.map(used => used ? NaN : left[next++]);
@@ -56,6 +56,12 @@
     toImageButtonOptions: { scale: 2 },
   };
   const gaps = values => values.map(value => Number.isFinite(value) ? value : null);
+  const broken = (values, breaks, fill) => {
+    if (!breaks.length) return values;
+    const out = [];
+    values.forEach((value, i) => { if (breaks.includes(i)) out.push(fill(i)); out.push(value); });
+    return out;
+  };
   const INK = "#3b4654", PALE = "#9fb4c7"; // as in plots.py
   const themed = (figure, width, light) => {
     const ink = light ? "#1b2430" : named("--ink");
@@ -85,11 +91,12 @@
     const place = plot.dataset.result;
     const key = `${place}-${plot.dataset.sample}`;
     const curves = curvesOf(place, key);
-    const pattern = data.results[place].figure;
+    const { figure: pattern, breaks } = data.results[place];
+    const x = broken(curves.x, breaks, i => curves.x[i]);
     const traces = pattern.data.map(trace => {
       const meta = trace.meta;
       const y = meta.curve === "contribution" ? curves.contributions[meta.component] : curves[meta.curve];
-      return Object.assign({}, trace, { x: curves.x, y: gaps(y || []) });
+      return Object.assign({}, trace, { x, y: broken(gaps(y || []), breaks, () => null) });
     }).filter(trace => trace.y.some(value => value !== null));
     const layout = Object.assign({}, pattern.layout, { shapes: data.samples[key].shapes });
     layout.xaxis = Object.assign({}, layout.xaxis, { unifiedhovertitle: { text: `%{x:.6~g} ${data.results[place].unit}` } });
