@@ -7,9 +7,10 @@ from collections.abc import Iterable
 from typing import Any
 
 #: longest text of a file that a page shows in one place
-LONGEST = 200
+LONGEST = 100
 
-_CONTROL = re.compile(r"[\x00-\x08\x0b\x0c\x0e-\x1f\x7f-\x9f\ufffe\uffff]")
+#: control characters, and those that turn the writing direction of what follows; right-to-left scripts need none
+_CONTROL = re.compile(r"[\x00-\x08\x0b\x0c\x0e-\x1f\x7f-\x9f\u202a-\u202e\u2066-\u2069\ufffe\uffff]")
 _VOID = {"meta", "link", "br", "input", "line", "rect", "path"}
 
 
@@ -70,7 +71,10 @@ def element(tag: str, *children: Child, **attributes: Any) -> Markup:
 
 def name_of(text: object, tag: str = "bdi") -> Markup:
     """A name out of a file: cut to a bearable length, its writing direction kept to itself."""
-    return element(tag, shown(text), dir="auto")
+    name = shown(text)
+    # A word that no column has room for may break anywhere, others stay whole
+    endless = any(len(word) > 24 for word in name.split())
+    return element(tag, name, dir="auto", class_="endless" if endless else None)
 
 
 def script_json(structure: Any) -> Markup:
