@@ -9,7 +9,7 @@ import numpy as np
 import xarray as xr
 
 from unmix.diagnose.atmosphere import Atmosphere, atmosphere
-from unmix.diagnose.saturation import plateaus
+from unmix.diagnose.saturation import saturated
 from unmix.kernels import BoolArray, FloatArray
 from unmix.spectra import labels_of, rows_of, spectral_dim
 from unmix.units import SPECTRAL_UNITS, quantity_unit, to_absorbance
@@ -84,7 +84,7 @@ def quality(spectra: xr.DataArray) -> xr.Dataset:
     plateau = np.full(values.shape[0], np.nan)
     air = Atmosphere(plateau, plateau)
     if absorbance is not None:
-        plateau = plateaus(absorbance)
+        _, plateau = saturated(absorbance)
         bent = absorbance >= _TOP * plateau[:, None]
         if dim == "wavenumber":
             air = atmosphere(axis, absorbance, channel_noise(absorbance))

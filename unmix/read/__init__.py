@@ -217,7 +217,7 @@ def read_file(path: Path, options: Options) -> list[Found | xr.DataArray]:
             return [read_store(path, head, options)]
         if head.startswith(b"PK\x03\x04"):
             return [*read_workbook(path, options, file=path.name)]
-        if is_jcamp(head):
+        if is_jcamp(head, file=path.name):
             return [*read_jcamp(plain_lines(path.read_bytes(), file=path.name), options, file=path.name)]
         return [*read_table(path, options, file=path.name)]
     except OSError as error:

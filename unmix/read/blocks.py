@@ -12,7 +12,7 @@ from dataclasses import dataclass, field
 
 from unmix.errors import ReadError
 from unmix.read.found import Findings
-from unmix.read.text import decoded
+from unmix.read.text import decoded, encoding_of
 
 _LABEL = re.compile(rb"^[ \t]*##([^=\n]{0,120})=", re.MULTILINE)
 _SAME = re.compile(r"[ \-/_\t]")
@@ -59,10 +59,18 @@ def canonical(label: str) -> str:
     return _SAME.sub("", label).upper()
 
 
-def is_jcamp(data: bytes) -> bool:
-    """Whether a file starts as JCAMP-DX does: with a label, behind blank lines and comments at most."""
-    head = decoded(data[:4096])
-    return re.match(r"(\s*(\$\$[^\n]*)?\n)*\s*##[^=\n]{0,120}=", head) is not None
+def is_jcamp(head: bytes, *, file: str) -> bool:
+    """Whether a file starts as JCAMP-DX does: with a label, behind blank lines and comments at most.
+
+    Raises
+    ------
+    ReadError
+        When the bytes are no text.
+    """
+    encoding = encoding_of(head, file=file)
+    lines = head.decode(encoding, errors="ignore").splitlines()
+    first = next((line.strip() for line in lines if line.strip() and not line.strip().startswith("$$")), "")
+    return re.match(r"##[^=]{0,120}=", first) is not None
 
 
 def split_blocks(data: bytes, findings: Findings) -> list[Block]:

@@ -78,7 +78,7 @@ def _of_folder(folder: Path) -> tuple[list[Path], bool, list[str]]:
                         accepted=f"the suffixes looked for are {', '.join(SUFFIXES)}")  # fmt: skip
     taken = set(paths)
     others = [entry.name for entry in entries if entry not in taken and entry.is_file()]
-    return paths, True, [f"{listed(others)} in the folder {folder.name} were left alone"] if others else []
+    return paths, True, [f"left alone in the folder {folder.name}: {listed(others)}"] if others else []
 
 
 def read_all(
@@ -104,7 +104,8 @@ def read_all(
         try:
             read.append((path, reader(path)))
         except ReadError as error:
-            if not many:
+            # One bad file of one is no list of reasons
+            if not many or len(paths) == 1:
                 raise
             refused[unique_name(path, refused)] = (
                 str(error).removeprefix(f"{path.name}: ").removeprefix(f"{path.name}, ")
@@ -278,5 +279,6 @@ def warn_of(notes: Sequence[str], refused: dict[str, str]) -> None:
     for text in texts[:NAMED]:
         warnings.warn(text, UnmixWarning, stacklevel=3)
     if len(texts) > NAMED:
-        warnings.warn(f"{len(texts) - NAMED} more remarks stand in the attributes 'notes' and 'refused'", UnmixWarning,
-                      stacklevel=3)  # fmt: skip
+        warnings.warn(
+            f"{len(texts) - NAMED} more: see the attributes 'notes' and 'refused'", UnmixWarning, stacklevel=3
+        )

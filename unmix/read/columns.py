@@ -89,7 +89,7 @@ def named_columns(layout: Layout, options: Options, findings: Findings) -> Namin
                 if i == names_at:
                     labels[j] = name if unit and name else "" if only_units else row[j + 1]
         elif row[0] and not axis_heading(row[0]):
-            _keep(coords, row[0], row[1:])
+            _keep(coords, row[0], row[1:], findings)
     return _naming(labels, units, texts, coords, layout, options, findings)
 
 
@@ -120,7 +120,7 @@ def named_rows(
     coords: dict[str, list[Any]] = {}
     for j, (head, column) in enumerate(zip(heads, columns, strict=True)):
         if j != names_at:
-            _keep(coords, head or f"column {j + 1}", column)
+            _keep(coords, head or f"column {j + 1}", column, findings)
     labels = columns[names_at] if names_at is not None else [""] * n
     return _naming(labels, [None] * n, [""] * n, coords, layout, options, findings)
 
@@ -162,22 +162,33 @@ def _path(coords: dict[str, list[Any]], text: str, n: int, findings: Findings) -
         findings.note(f"path length '{text[:60]}' has no unit that is understood; left out")
 
 
-def _keep(coords: dict[str, list[Any]], heading: str, cells: Sequence[str]) -> None:
+def _keep(coords: dict[str, list[Any]], heading: str, cells: Sequence[str], findings: Findings) -> None:
     """Keep a row or column of facts as a coordinate: numbers where all are numbers, else texts."""
     entries: list[Any] = [read_cell(cell.strip()) for cell in cells]
     numbers = [_float(cell) for cell in entries]
     name = heading.replace("/", "_").strip()
-    if all(number is not None for number in numbers):
-        entries = numbers
     unit = path_heading(heading)
     if unit is not None:
-        try:
-            name, entries = "path_length", [length_in_cm(f"{cell} {unit}") for cell in cells]
-        except UnitError:
-            name = heading
+        paths = [_length(cell, unit) for cell in entries]
+        if None in paths:
+            findings.note(f"the path lengths under '{heading}' have no unit that is understood; left out")
+            return
+        name, entries = "path_length", paths
+    elif all(number is not None for number in numbers):
+        entries = numbers
     while name in _TAKEN or name in coords:
         name += "_"
     coords[name] = entries
+
+
+def _length(cell: str, unit: str) -> float | None:
+    """A path length in centimetres, NaN where it is missing, None where it is not understood."""
+    if cell.lower() in MISSING:
+        return np.nan
+    try:
+        return length_in_cm(f"{cell} {unit}") if unit or cell[-1:].isalpha() else None
+    except UnitError:
+        return None
 
 
 def _float(cell: str) -> float | None:

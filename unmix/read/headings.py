@@ -107,8 +107,10 @@ def _unit(text: str) -> OrdinateUnit | None:
 def path_heading(text: str) -> str | None:
     """The length unit in the heading of a row or column of path lengths; None where it is no such heading.
 
-    The unit is empty where it stands beside each number instead.
+    The unit is empty where it stands beside each number instead; ``path_length`` is in cm, as everywhere in unmix.
     """
+    if text.strip() == "path_length":
+        return "cm"
     word = plain(text).replace("_", " ")
     match = re.fullmatch(r"(?:optical |cell )?path ?(?:length)?\s*[(\[/,]?\s*(cm|mm|um|m)?\s*[)\]]?", word)
     return (match.group(1) or "") if match else None

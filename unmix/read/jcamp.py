@@ -88,7 +88,7 @@ def _header(block: Block, findings: Findings) -> Header:
 
     return Header(first_x=get("FIRSTX"), last_x=get("LASTX"), delta_x=get("DELTAX"), n_points=get("NPOINTS"),
                   x_factor=get("XFACTOR"), y_factor=get("YFACTOR"), first_y=get("FIRSTY"), max_y=get("MAXY"),
-                  min_y=get("MINY"))  # fmt: skip
+                  min_y=get("MINY"), max_x=get("MAXX"), min_x=get("MINX"))  # fmt: skip
 
 
 def _only(block: Block, label: str, findings: Findings) -> Entry | None:
@@ -100,19 +100,23 @@ def _only(block: Block, label: str, findings: Findings) -> Entry | None:
 
 
 def _of_block(block: Block, entry: Entry, source: _Source) -> Found:
-    table = read_table(entry, _header(block, source.findings), source.findings, source.budget)
-    entries = [_only(block, label, source.findings) for label in ("XUNITS", "YUNITS")]
+    findings = Findings(source.findings.file, source.options.checks)
+    table = read_table(entry, _header(block, findings), findings, source.budget)
+    entries = [_only(block, label, findings) for label in ("XUNITS", "YUNITS")]
     x_units, y_units = (found.value if found else "" for found in entries)
-    return _found(block, table, x_units, y_units, "", source)
+    return _found(block, table, x_units, y_units, block.text("TITLE"), source, findings)
 
 
 def _of_page(block: Block, page: Page, source: _Source) -> Found:
-    table = read_table(page.table, page.header, source.findings, source.budget)
-    return _found(block, table, page.x_units, page.y_units, page.name, source)
-
-
-def _found(block: Block, table: Table, x_units: str, y_units: str, page: str, source: _Source) -> Found:
     findings = Findings(source.findings.file, source.options.checks)
+    table = read_table(page.table, page.header, findings, source.budget)
+    title = f"{block.text('TITLE')}, {page.name}" if page.name else block.text("TITLE")
+    return _found(block, table, page.x_units, page.y_units, title, source, findings)
+
+
+def _found(
+    block: Block, table: Table, x_units: str, y_units: str, title: str, source: _Source, findings: Findings
+) -> Found:
     data_type = block.text("DATATYPE")
     raman = "RAMAN" in data_type.upper()
     line = (block.find("XUNITS") or block.entries[0]).line
@@ -128,7 +132,6 @@ def _found(block: Block, table: Table, x_units: str, y_units: str, page: str, so
         values, notes = settle(values, unit, quantity)
         findings.notes += notes
         quantity, per = unit.quantity, per or unit.per
-    title = block.text("TITLE")
     facts = {
         "format": f"JCAMP-DX {block.text('JCAMPDX').split(' ')[0]}".strip(),
         "packing": table.forms,
@@ -142,7 +145,7 @@ def _found(block: Block, table: Table, x_units: str, y_units: str, page: str, so
     path_length = _path_length(block, findings)
     if path_length is not None:
         coords["path_length"] = [path_length]
-    return Found(axis, values, x_unit.dim, quantity, [f"{title}, {page}" if page else title], findings.file, per,
+    return Found(axis, values, x_unit.dim, quantity, [title], findings.file, per,
                  coords, notes=findings.notes, facts=facts)  # fmt: skip
 
 

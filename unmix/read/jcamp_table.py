@@ -17,7 +17,8 @@ from unmix.read.ordinates import Ordinates, decode, decode_pairs, last_digit
 
 #: part of a step by which an abscissa may drift because first, last and step are printed rounded
 _DRIFT = 0.25
-#: factors by which a header may be off and still only be in another scale
+#: a header is in another scale where it agrees with the data to this part after one of these factors
+_LOOSE = 0.02
 _SCALES = ((100.0, "in percent"), (0.01, "as a fraction"))
 
 
@@ -43,6 +44,8 @@ class Header:
     first_y: Number | None = None
     max_y: Number | None = None
     min_y: Number | None = None
+    max_x: Number | None = None
+    min_x: Number | None = None
 
 
 @dataclass
@@ -118,6 +121,7 @@ def read_table(entry: Entry, header: Header, findings: Findings, budget: Budget)
     else:
         raise ReadError(f"the table has the form '{entry.value[:60]}'", path=findings.file, line=entry.line,
                         accepted="unmix reads (X++(Y..Y)), (XY..XY) and (X,Y)")  # fmt: skip
+    _check_range(x, header, findings)
     _check_y(y, header, y_factor, findings)
     return Table(x, y, forms)
 
@@ -222,6 +226,14 @@ def _ends(x: FloatArray, header: Header, findings: Findings) -> None:
                             number.line)  # fmt: skip
 
 
+def _check_range(x: FloatArray, header: Header, findings: Findings) -> None:
+    """Compare the largest and smallest abscissa with the header, which no point depends on."""
+    close = 0.5 * float(np.ptp(x)) / max(x.size - 1, 1)
+    for name, number, found in (("MAXX", header.max_x, float(x.max())), ("MINX", header.min_x, float(x.min()))):
+        if number is not None and abs(number.value - found) > close + number.unit:
+            findings.note(f"##{name}= says {number.value:.8g} but the table has {found:.8g}", number.line)
+
+
 def _check_y(y: FloatArray, header: Header, y_factor: float, findings: Findings) -> None:
     known = y[~np.isnan(y)]
     if not known.size:
@@ -250,6 +262,8 @@ def _check_y(y: FloatArray, header: Header, y_factor: float, findings: Findings)
 def _scale(number: Number, found: float, y_factor: float, close: float) -> str:
     """In which other scale a header's value agrees with the data; empty where in none."""
     for factor, name in (*_SCALES, (1 / y_factor, "before its factor")):
-        if factor != 1 and abs(number.value / factor - found) <= close + number.unit / abs(factor):
+        if factor != 1 and abs(number.value / factor - found) <= close + number.unit / abs(factor) + _LOOSE * abs(
+            found
+        ):
             return name
     return ""

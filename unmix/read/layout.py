@@ -210,9 +210,15 @@ def _choose(columns: Layout | None, rows: Layout | None, data: Sequence[Row], op
     if columns is None and rows is None:
         raise ReadError("neither the first column nor a line of headings is an axis", path=file, line=data[0][0],
                         accepted="an axis is a list of numbers in rising or falling order")  # fmt: skip
-    if columns is None or rows is None:
-        return columns or rows  # type: ignore[return-value]
-    first = [float(cells[0].replace(",", ".")) for line, cells in data if line >= columns.first_line]
+    if rows is None or columns is None:
+        found = rows or columns
+        assert found is not None
+        if found is columns and found.headings and not found.axis_text and not _runs_one_way(_first(data, found)):
+            raise ReadError("neither the first column nor a line of headings is an axis", path=file,
+                            line=found.first_line,
+                            accepted="an axis is a list of numbers in rising or falling order")  # fmt: skip
+        return found
+    first = _first(data, columns)
     if rows.axis_text and not columns.axis_text:
         return rows
     if not _runs_one_way(first) and not columns.axis_text:
@@ -226,8 +232,13 @@ def _choose(columns: Layout | None, rows: Layout | None, data: Sequence[Row], op
 
 
 def _counts_down(data: Sequence[Row], columns: Layout) -> bool:
-    first = [float(cells[0].replace(",", ".")) for line, cells in data if line >= columns.first_line]
+    first = _first(data, columns)
     return len(first) > 1 and _counts(first)
+
+
+def _first(data: Sequence[Row], columns: Layout) -> list[float]:
+    """The numbers in the first column of the rows seen so far."""
+    return [float(cells[0].replace(",", ".")) for line, cells in data if line >= columns.first_line]
 
 
 def label_row(headings: Sequence[Sequence[str]]) -> int | None:

@@ -115,6 +115,8 @@ def read_rows(
     del table
     naming = named_columns(layout, options, findings)
     used = np.array([bool(name) for name in naming.filled]) | ~np.isnan(values).all(axis=1)
+    if not used.any():
+        raise ReadError("every column beside the axis is empty", path=file, line=layout.first_line)
     if not used.all():
         values = values[used]
         naming = naming.only(used)
