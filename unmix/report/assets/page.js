@@ -72,6 +72,7 @@
       hoverlabel: { bgcolor: light ? "#ffffff" : named("--soft"), font: { color: ink } },
     });
     layout.xaxis = Object.assign({}, layout.xaxis);
+    if (light) layout.height = Math.min(layout.height, 610); // with its table on one page of A4
     const traces = figure.data.map(trace => {
       const copy = Object.assign({}, trace, { line: Object.assign({}, trace.line) });
       if (copy.line.color === INK) copy.line.color = ink;
