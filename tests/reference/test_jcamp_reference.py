@@ -32,13 +32,13 @@ EXPECTED = {
         (1976, 4400.0, 450.0, None, None), (3951, 4400.0, 450.0, None, 0.7228),
     ],
     "ir_pac_descending.jdx": [(3301, 4000.0, 700.0, 101.60, 101.24)],
-    "uvvis_difdup_ascending.jdx": [(440, 250.0, 469.5, 1.1663, 1.4626)],
+    "uvvis_difdup_ascending.jdx": [(440, 250.0, 469.5, 1.1663, 0.1626)],
 }  # fmt: skip
 
 
 @pytest.mark.parametrize("text", [
     "0 1 2 3 3 2 1 0 -1 -2 -3", "0+1+2+3+3+2+1+0-1-2-3", "0 1BCCBA@abc", "0 1JJ%jjjjjj", "0 1JT%jX",
-    "0+1 2C3B 1@-1b-3",
+    "0+1 2CCB 1@-1b-3",
 ])  # fmt: skip
 def test_one_set_of_ordinates_in_every_form(text):
     assert decode(text.encode(), path="", line=1, limit=99).values.tolist() == [1, 2, 3, 3, 2, 1, 0, -1, -2, -3]
@@ -98,8 +98,8 @@ def test_whole_folder_keeps_each_axis_or_shares_one():
     assert sum(one.sizes["sample"] for one in apart) == 11
     with pytest.warns(unmix.errors.UnmixWarning):
         together = unmix.read(FOLDER / "ir_*.jdx")
-    assert together.sizes == {"sample": 11, "wavenumber": 1626}
-    assert together.wavenumber.values[[0, -1]].tolist() == [700.0, 3950.0] or together.wavenumber.values[0] >= 700
+    # The coarsest axis, 450 to 4400 by 2, within the shared range 700 to 3699.742
+    assert together.wavenumber.values.tolist() == list(range(700, 3700, 2))
     assert len(set(together.label.values)) == 11
     assert len(json.loads(together.attrs["source_sha256"])) == 7
 
@@ -122,8 +122,8 @@ def test_every_lost_line_is_caught(tmp_path):
         lines = path.read_bytes().split(b"\n")
         inside = [i for i, line in enumerate(lines) if re.match(rb"\s*[\d.]+ *[-+ @A-Ia-i]", line)]
         for at in (inside[0], inside[len(inside) // 2], inside[-1]):
-            if at == inside[-1] and "difdup" in path.name:
-                continue  # only repeats the last ordinate
+            if at == inside[-1] and ("difdup" in path.name or "link" in path.name):
+                continue  # it only repeats the last ordinate
             (tmp_path / path.name).write_bytes(b"\n".join(lines[:at] + lines[at + 1 :]))
-            with pytest.raises(ReadError, match="check|NPOINTS|line"):
+            with pytest.raises(ReadError, match=r"check|NPOINTS|line"):
                 read_file(tmp_path / path.name, Options())

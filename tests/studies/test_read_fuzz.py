@@ -38,7 +38,8 @@ TABLES = [
 ]
 WORDS = [b"1000000000000", b"-1", b"0", b"1E+300", b"NaN", b"inf", b"##END=", b"##TITLE= x", b"$$", b"?", b"s99999999",
          b"Z9", b"(XY..XY)", b"(X++(Y..Y))", b"##DATA TYPE= LINK", b"##NPOINTS= 1000000000000", b"##XFACTOR= 0",
-         b"##PAGE= N=1", b"##SYMBOL= X", b"\xff", b"\0", b"\xe9", b'"', b",,,,", b";", b"\t", b"1e-400", b"_", b"%"]  # fmt: skip
+         b"##PAGE= N=1", b"##SYMBOL= X", b"\xff", b"\0", b"\xe9", b"\x22", b",,,,", b";", b"\t",
+         b"1e-400", b"_", b"%"]  # fmt: skip
 
 
 def seeds(folder):
@@ -56,7 +57,7 @@ def seeds(folder):
     return found
 
 
-def damaged(rng, pool):
+def damaged(rng, pool):  # noqa: PLR0912 - one branch a kind of damage
     """One file of the pool with one to four kinds of damage."""
     data = bytearray(pool[rng.integers(len(pool))])
     for _ in range(rng.integers(1, 5)):
@@ -105,10 +106,13 @@ def read_or_refuse(path, data, checks):
             assert np.isfinite(one.axis).all()
             assert (np.diff(one.axis) > 0).all()
             assert one.values.shape == (len(one.labels), one.axis.size)
-        outcome = "read"
     except ReadError as error:
-        assert len(str(error)) < 1000
+        message = str(error)
         outcome = "refused"
+    else:
+        message = ""
+        outcome = "read"
+    assert len(message) < 1000
     return outcome, time.perf_counter() - start
 
 
@@ -161,7 +165,7 @@ def test_endless_counts_allocate_nothing(tmp_path):
     for table in (b"0A1J1J1\n", b"0A1s99999999999\n", b"0A1s99999999999999999999\n"):
         tracemalloc.start()
         (tmp_path / "huge.jdx").write_bytes(header + table + b"##END=\n")
-        with pytest.raises(ReadError, match="ordinates|points|digits"):
+        with pytest.raises(ReadError, match=r"ordinates|points|digits"):
             read_file(tmp_path / "huge.jdx", Options())
         peak = tracemalloc.get_traced_memory()[1]
         tracemalloc.stop()

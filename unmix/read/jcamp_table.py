@@ -109,7 +109,7 @@ def read_table(entry: Entry, header: Header, findings: Findings, budget: Budget)
         for line, text in raw.faults[:1]:
             more = f"; {len(raw.faults) - 1} more lines fail" if len(raw.faults) > 1 else ""
             findings.failed(text + more, line)
-        x = _placed(raw, header, x_factor, findings)
+        x = _placed(raw, header, x_factor, findings, entry.line)
         y = _scaled(raw.values, y_factor)
         forms = " ".join(sorted(raw.forms))
     elif re.match(r"\((XY|X,?Y)", form):
@@ -148,10 +148,9 @@ def _count(n: int, header: Header, findings: Findings, line: int) -> None:
                         header.n_points.line)  # fmt: skip
 
 
-def _placed(raw: Ordinates, header: Header, x_factor: float, findings: Findings) -> FloatArray:
+def _placed(raw: Ordinates, header: Header, x_factor: float, findings: Findings, line: int) -> FloatArray:
     """The abscissa of every ordinate, from the header, checked against what the lines print."""
     n = raw.values.size
-    line = int(raw.line[0])
     _count(n, header, findings, line)
     first = header.first_x.value if header.first_x else raw.x[0] * x_factor
     if not header.first_x:
@@ -181,7 +180,7 @@ def _step(first: float, n: int, header: Header, findings: Findings, line: int) -
     if step == 0:
         raise ReadError(f"##FIRSTX= and ##LASTX= are both {first:.10g}", path=findings.file,
                         line=header.last_x.line)  # fmt: skip
-    if delta is not None and abs(delta.value - step) > delta.unit + _DRIFT * abs(step):
+    if delta is not None and abs(delta.value - step) > 0.5 * delta.unit + _DRIFT * abs(step):
         findings.note(f"##DELTAX= says {delta.value:.8g} but ##FIRSTX=, ##LASTX= and ##NPOINTS= make it "
                       f"{step:.8g}; the latter is used", delta.line)  # fmt: skip
     return step
@@ -215,7 +214,7 @@ def _ends(x: FloatArray, header: Header, findings: Findings) -> None:
     for name, number in (("FIRSTX", header.first_x), ("LASTX", header.last_x)):
         if number is None:
             continue
-        tolerance = number.unit + 1e-6 * abs(number.value)
+        tolerance = 0.5 * number.unit + 1e-6 * abs(number.value)
         near = float(x[0] if name == "FIRSTX" else x[-1])
         if abs(near - number.value) <= tolerance:
             continue
@@ -230,7 +229,7 @@ def _check_range(x: FloatArray, header: Header, findings: Findings) -> None:
     """Compare the largest and smallest abscissa with the header, which no point depends on."""
     close = 0.5 * float(np.ptp(x)) / max(x.size - 1, 1)
     for name, number, found in (("MAXX", header.max_x, float(x.max())), ("MINX", header.min_x, float(x.min()))):
-        if number is not None and abs(number.value - found) > close + number.unit:
+        if number is not None and abs(number.value - found) > close + 0.5 * number.unit:
             findings.note(f"##{name}= says {number.value:.8g} but the table has {found:.8g}", number.line)
 
 
@@ -245,7 +244,7 @@ def _check_y(y: FloatArray, header: Header, y_factor: float, findings: Findings)
                                 ("MINY", header.min_y, low)):  # fmt: skip
         if number is None or np.isnan(found):
             continue
-        if abs(number.value - found) <= close + number.unit + 1e-3 * abs(found):
+        if abs(number.value - found) <= close + 0.5 * number.unit + 1e-3 * abs(found):
             continue
         said = f"##{name}= says {number.value:.6g} but the table has {found:.6g}"
         reason = _scale(number, found, y_factor, close)
@@ -262,8 +261,7 @@ def _check_y(y: FloatArray, header: Header, y_factor: float, findings: Findings)
 def _scale(number: Number, found: float, y_factor: float, close: float) -> str:
     """In which other scale a header's value agrees with the data; empty where in none."""
     for factor, name in (*_SCALES, (1 / y_factor, "before its factor")):
-        if factor != 1 and abs(number.value / factor - found) <= close + number.unit / abs(factor) + _LOOSE * abs(
-            found
-        ):
-            return name
+        rounding = min(0.5 * number.unit / abs(factor), 0.1 * abs(found))
+        if factor != 1 and abs(number.value / factor - found) <= close + rounding + _LOOSE * abs(found):
+            return name if number.value else ""
     return ""
