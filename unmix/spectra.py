@@ -4,6 +4,7 @@ Everything that enters a solver passes here once; what comes out has the spectra
 increasing finite axis, a known unit and a known quantity, and inner code trusts it.
 """
 
+import re
 import warnings
 from collections.abc import Mapping, Sequence
 from typing import Any
@@ -127,7 +128,7 @@ def check_spectra(spectra: Any, *, name: str = "spectra") -> xr.DataArray:
     """
     if not isinstance(spectra, xr.DataArray):
         raise InputError(f"{name} is a {type(spectra).__name__}, not labelled spectra",
-                         accepted="read files with unmix.read, or build one with unmix.spectra.make_spectra")  # fmt: skip
+                         accepted="read files with unmix.read or build them with spectra.make_spectra")  # fmt: skip
     dim = spectral_dim(spectra, name=name)
     if spectra.size == 0:
         raise InputError(f"{name} is empty (shape {spectra.shape})")
@@ -205,30 +206,48 @@ def as_absorbance(spectra: xr.DataArray, *, name: str = "spectra") -> tuple[xr.D
 def as_pure(pure: Any, *, name: str = "pure") -> xr.DataArray:
     """Checked pure spectra with dims (component, spectral) and distinct names.
 
-    Spectra with another leading dimension are taken as pure spectra named by their coordinate ``label``.
+    Spectra with another leading dimension are taken as pure spectra named by their coordinate ``label``; a single
+    spectrum may be named by a coordinate ``component`` without dimension.
 
     Raises
     ------
     InputError
-        Duplicate or missing names, or a missing channel in every spectrum.
+        Missing, empty or duplicate names, or more than one leading dimension.
+    UnitError
+        ``attrs["per"]`` is not an amount but the unit of an absorptivity.
     """
-    pure = check_spectra(pure, name=name)
-    if pure.ndim != 2:
-        raise InputError(f"{name} has dimensions {listed(pure.dims)}", accepted="give (component, spectral)")
-    leading = str(pure.dims[0])
+    found: xr.DataArray = check_spectra(pure, name=name)
+    if found.ndim != 2:
+        raise InputError(f"{name} has dimensions {listed(found.dims)}", accepted="give (component, spectral)")
+    leading = str(found.dims[0])
     if leading != "component":
-        names = pure["label"].values if "label" in pure.coords else None
-        pure = pure.rename({leading: "component"})
-        if names is not None:
-            pure = pure.drop_vars("label").assign_coords(component=("component", names.astype(str)))
-    if "component" not in pure.coords:
+        named = [c for c in ("label", "component", leading) if c in found.coords and found[c].dims in ((leading,), ())]
+        if not named or found[named[0]].size != found.sizes[leading]:
+            raise InputError(f"{name} has no component names", accepted="give it a coordinate 'component'")
+        along = np.atleast_1d(found[named[0]].values).astype(str)
+        found = found.drop_vars([c for c in ("label", "component", leading) if c in found.coords])
+        found = found.rename({leading: "component"}).assign_coords(component=("component", along))
+    if "component" not in found.coords:
         raise InputError(f"{name} has no component names", accepted="give it a coordinate 'component'")
-    names = [str(text) for text in pure["component"].values]
+    names = [str(text) for text in found["component"].values]
+    if not all(text.strip() for text in names):
+        at = next(i for i, text in enumerate(names) if not text.strip())
+        raise InputError(f"{name}: spectrum {at + 1} of {len(names)} has an empty component name",
+                         accepted="give every pure spectrum a name of its own")  # fmt: skip
     double = sorted({text for text in names if names.count(text) > 1})
     if double:
         raise InputError(f"{name}: component name {listed(double)} appears more than once",
                          accepted="give every pure spectrum a name of its own")  # fmt: skip
-    return pure
+    _check_per(found.attrs.get("per", ""), name)
+    return found
+
+
+def _check_per(per: Any, name: str) -> None:
+    """Refuse the unit of an absorptivity where an amount is asked for; its reading would be a guess."""
+    if not isinstance(per, str) or re.search(r"-\s*[12]\b|\u207b|[(/][^)/]*\b[cmuk]?m\b\s*\)|/\s*[cmuk]?m\b|^c?m2", per):
+        raise UnitError(f"{name}: attrs['per'] is {per!r}, which is not a unit of amount",
+                        accepted="give the unit amount such as 'g/L' or 'mol/L', with a path unit behind it "
+                                 "where that is not cm, such as 'umol/mol m'")  # fmt: skip
 
 
 def labels_of(spectra: xr.DataArray) -> list[str]:
