@@ -16,6 +16,9 @@ from unmix.errors import AxisError, InputError, UnitError, UnmixWarning, listed
 from unmix.kernels import FloatArray
 from unmix.units import QUANTITIES, SPECTRAL_UNITS, to_absorbance
 
+#: what gives away the unit of an absorptivity: a power of -1, an area, or a length under a stroke
+_NO_AMOUNT = re.compile(r"-\s*[12]\b|\u207b|[(/][^)/]*\b[cmuk]?m\b\s*\)|/\s*[cmuk]?m\b|^c?m2")
+
 #: the words for the three spectral dimensions in a message
 _DIMS = "'wavenumber' (cm-1), 'wavelength' (nm) or 'raman_shift' (cm-1)"
 
@@ -244,7 +247,7 @@ def as_pure(pure: Any, *, name: str = "pure") -> xr.DataArray:
 
 def _check_per(per: Any, name: str) -> None:
     """Refuse the unit of an absorptivity where an amount is asked for; its reading would be a guess."""
-    if not isinstance(per, str) or re.search(r"-\s*[12]\b|\u207b|[(/][^)/]*\b[cmuk]?m\b\s*\)|/\s*[cmuk]?m\b|^c?m2", per):
+    if not isinstance(per, str) or _NO_AMOUNT.search(per):
         raise UnitError(f"{name}: attrs['per'] is {per!r}, which is not a unit of amount",
                         accepted="give the unit amount such as 'g/L' or 'mol/L', with a path unit behind it "
                                  "where that is not cm, such as 'umol/mol m'")  # fmt: skip
