@@ -14,6 +14,7 @@ if TYPE_CHECKING:
     from unmix.report.page import report
     from unmix.solve.design import conditioning
     from unmix.solve.known import quantify
+    from unmix.solve.standards import learn_pure
 
 #: public name -> the module that holds it
 _HOMES = {
@@ -21,6 +22,7 @@ _HOMES = {
     "write": "unmix.read",
     "quantify": "unmix.solve.known",
     "conditioning": "unmix.solve.design",
+    "learn_pure": "unmix.solve.standards",
     "report": "unmix.report.page",
 }
 
@@ -29,7 +31,7 @@ try:
 except PackageNotFoundError:  # a source tree that was never installed
     __version__ = "0+unknown"
 
-__all__ = ["conditioning", "quantify", "read", "report", "write"]
+__all__ = ["conditioning", "learn_pure", "quantify", "read", "report", "write"]
 
 
 def __getattr__(name: str) -> Any:

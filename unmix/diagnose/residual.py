@@ -7,7 +7,7 @@ simulated.
 """
 
 from functools import lru_cache
-from typing import NamedTuple
+from typing import NamedTuple, Protocol
 
 import numpy as np
 from numpy.typing import NDArray
@@ -259,6 +259,18 @@ class FilterPair:
         return out * self.weight
 
 
+class Filters(Protocol):
+    """Whitening of rows of channels and its transpose: :class:`FilterPair`, or a metric."""
+
+    def forward(self, x: FloatArray) -> FloatArray:
+        """Rows as the whitened data see them."""
+        ...
+
+    def transpose(self, x: FloatArray) -> FloatArray:
+        """The transpose of ``forward``."""
+        ...
+
+
 class Whitened(NamedTuple):
     """One spectrum's fit in whitened form, as the search for bands needs it.
 
@@ -270,7 +282,7 @@ class Whitened(NamedTuple):
         Orthonormal basis of the whitened design, as rows.
     factor : ndarray, shape (terms, terms)
         Fitted terms = factor @ (basis @ whitened data).
-    filters : FilterPair
+    filters : Filters
         Of this spectrum alone.
     energy : ndarray, shape (places,)
         ||Wg||^2 of the templates.
@@ -281,7 +293,7 @@ class Whitened(NamedTuple):
     residual: FloatArray
     basis: FloatArray
     factor: FloatArray
-    filters: FilterPair
+    filters: Filters
     energy: FloatArray
     freedom: float
 

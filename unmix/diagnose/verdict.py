@@ -77,6 +77,7 @@ class Evidence:
     plateau: float = float("nan")
     stray: float = 0.0
     growth: float = 1.0
+    excess: float = float("nan")
     freedom: float = float("inf")
     noise_level: float = float("nan")
     noise_given: float | None = None
@@ -204,6 +205,8 @@ def _negative(evidence: Evidence, words: Words) -> list[tuple[int, str]]:
 
 
 def _noise(evidence: Evidence) -> list[tuple[int, str]]:
+    if evidence.excess > 1.0:
+        return [(1, f"The residual is {evidence.excess:.1f} times as large as any of the standards' is expected to be.")]
     if evidence.freedom <= 0 and evidence.noise_given is None:
         return [(1, f"{evidence.channels_used} channels for {evidence.n_terms} unknowns leave nothing to judge the "
                     "noise by, so there is no interval; give the noise level.")]  # fmt: skip

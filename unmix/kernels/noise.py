@@ -238,3 +238,23 @@ def correlation_length(model: Autoregression) -> FloatArray:
     full = np.concatenate([power, power[:, -2:0:-1]], axis=1)
     length: FloatArray = power[:, 0] / full.mean(axis=1)
     return length
+
+
+def local_noise(y: FloatArray) -> float:
+    """Noise of a channel from the third differences of the spectra, which smooth bands hardly touch.
+
+    Parameters
+    ----------
+    y : ndarray, shape (spectra, channels)
+        Four channels or more for an estimate; finite.
+
+    Returns
+    -------
+    float
+        Median over spectra and channels; never zero (the smallest step of the numbers at least).
+    """
+    least = float(np.finfo(y.dtype).eps * max(float(np.abs(y).max(initial=0.0)), 1e-12))
+    if y.shape[1] < 4:
+        return max(least, 1e-3 * float(np.abs(y).max(initial=0.0)))
+    # the differences of white noise have variance 1 + 9 + 9 + 1
+    return max(float(np.median(np.abs(np.diff(y, 3, axis=1)))) / 0.6745 / np.sqrt(20.0), least)

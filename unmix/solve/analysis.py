@@ -52,7 +52,7 @@ def analyse(
     answer = Answer.empty(n, k, p)
     signal = np.where(np.isfinite(signal), signal, 0.0)
     done = 0
-    for rows, shared in _patterns(weight):
+    for rows, shared in patterns(weight):
         used = shared != 0
         answer.used[rows] = used
         if int(used.sum()) < k + free.shape[1]:
@@ -72,7 +72,7 @@ def analyse(
     return answer
 
 
-def _patterns(weight: FloatArray) -> Iterator[tuple[IntArray, FloatArray]]:
+def patterns(weight: FloatArray) -> Iterator[tuple[IntArray, FloatArray]]:
     """Rows that share their weights, and the weights."""
     if weight.shape[0] and (weight == weight[0]).all():
         yield np.arange(weight.shape[0]), weight[0]

@@ -26,8 +26,16 @@ class Settings:
 AMOUNTS = ("concentration", "standard_uncertainty", "lower", "upper", "critical_level", "detection_limit",
            "quantification_limit", "misfit_harm", "negative")  # fmt: skip
 CURVES = ("fitted", "baseline")
-FIGURES = ("noise_level", "noise_correlation_length", "freedom", "misfit_z", "misfit_limit", "residual_growth",
-           "stray_light")  # fmt: skip
+FIGURES = (
+    "noise_level",
+    "noise_correlation_length",
+    "freedom",
+    "misfit_z",
+    "misfit_limit",
+    "residual_growth",
+    "residual_excess",
+    "stray_light",
+)
 
 
 @dataclass
@@ -55,6 +63,7 @@ class Answer:
     misfit_z: FloatArray
     misfit_limit: FloatArray
     residual_growth: FloatArray
+    residual_excess: FloatArray
     stray_light: FloatArray
     used: BoolArray
     bands: list[Bands | None]

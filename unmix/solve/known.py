@@ -20,6 +20,7 @@ from unmix.prepare.axis import common_axis, select_regions
 from unmix.provenance import provenance
 from unmix.solve.analysis import Progress
 from unmix.solve.answer import Answer, Settings
+from unmix.solve.learnt import quantify_learnt
 from unmix.solve.options import check_baseline, check_level, check_noise
 from unmix.solve.passes import Light, solve
 from unmix.solve.passes import noise_model as models
@@ -225,6 +226,7 @@ def quantify(
         Pure spectra. ``attrs["per"]`` is the unit amount; absorptivity is per unit amount and path (per cm unless
         ``per`` names another length), absorbance is taken as that of one unit amount at the samples' path. The
         coordinate ``relative_uncertainty`` may say how well each is known. Interpolated to the samples' channels.
+        A Dataset from ``learn_pure`` brings its own metric and errors; ``baseline`` and ``noise`` then play no part.
     nonnegative : bool
         Whether amounts are bounded at zero.
     baseline : int or None
@@ -272,6 +274,9 @@ def quantify(
     >>> [f"{value:.2e}" for value in found.concentration.values[0]]
     ['8.86e-03', '3.60e-02']
     """
+    if isinstance(pure, xr.Dataset):
+        return quantify_learnt(spectra, pure, nonnegative=nonnegative, level=level, regions=regions,
+                               path_length=path_length, progress=progress)  # fmt: skip
     samples, assumptions = as_absorbance(spectra, name="spectra")
     known, more = as_absorbance(as_pure(pure), name="pure")
     assumptions += more

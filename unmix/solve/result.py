@@ -1,6 +1,6 @@
 """Put labels, units, verdicts and reasons on the arrays of an answer."""
 
-from typing import TYPE_CHECKING, Any
+from typing import TYPE_CHECKING, Any, TypeAlias
 
 import numpy as np
 import xarray as xr
@@ -18,6 +18,9 @@ from unmix.units import SPECTRAL_UNITS
 
 if TYPE_CHECKING:
     from unmix.solve.known import KnownSpectra
+    from unmix.solve.learnt import LearntSpectra
+
+    Solver: TypeAlias = KnownSpectra | LearntSpectra
 
 #: shown wherever a result is shown
 CAUTION = (
@@ -55,7 +58,7 @@ _FIGURES = {
 def assemble(
     samples: xr.DataArray,
     pure: xr.DataArray,
-    estimator: "KnownSpectra",
+    estimator: "Solver",
     paths: Paths,
     progress: Progress | None,
 ) -> xr.Dataset:
@@ -66,7 +69,7 @@ def assemble(
     samples : DataArray, dims (..., spectral)
     pure : DataArray, dims (component, spectral)
         On the same channels.
-    estimator : KnownSpectra
+    estimator : KnownSpectra or LearntSpectra
         Fitted to the pure spectra per unit path.
     paths : Paths
     progress : callable or None
@@ -116,7 +119,7 @@ def _per_path(answer: Answer, factor: FloatArray) -> None:
 
 
 def _evidence(
-    answer: Answer, i: int, samples: xr.DataArray, estimator: "KnownSpectra", paths: Paths
+    answer: Answer, i: int, samples: xr.DataArray, estimator: "Solver", paths: Paths
 ) -> Evidence:
     axis = np.asarray(samples[spectral_dim(samples)].values, dtype=float)
     n_terms = estimator.pure_.shape[0] + (0 if estimator.baseline is None else estimator.baseline + 1)
@@ -140,6 +143,7 @@ def _evidence(
         bands=_bands(answer.bands[i], axis),
         harm=answer.misfit_harm[i],
         growth=float(answer.residual_growth[i]),
+        excess=float(answer.residual_excess[i]),
         stray=float(np.nan_to_num(answer.stray_light[i])),
         negative=answer.negative[i] if estimator.nonnegative else np.zeros(0),
         groups=answer.groups[i],
@@ -159,7 +163,7 @@ def _bands(found: Bands | None, axis: FloatArray) -> list[Band]:
 def _dataset(
     samples: xr.DataArray,
     pure: xr.DataArray,
-    estimator: "KnownSpectra",
+    estimator: "Solver",
     paths: Paths,
     answer: Answer,
     judged: list[tuple[str, str, Evidence]],
@@ -235,7 +239,7 @@ def _band_table(evidence: list[Evidence], over: Any, axis_unit: str, signal_unit
 
 
 def _design(
-    pure: xr.DataArray, estimator: "KnownSpectra", dim: str, signal_unit: str, paths: Paths
+    pure: xr.DataArray, estimator: "Solver", dim: str, signal_unit: str, paths: Paths
 ) -> dict[str, Any]:
     """Pure spectra as used and their conditioning on all usable channels."""
     usable = np.isfinite(estimator.pure_).all(axis=0)
