@@ -54,7 +54,7 @@ def error_model(found: list[FloatArray], amounts: FloatArray) -> ErrorModel:
         known = np.tile(amounts[:, j], len(found))
         counts = (known > 0) | (value > 0)
         absolute[j], relative[j] = _fit(value[counts] - known[counts], known[counts])
-        freedom[j] = max(np.count_nonzero(amounts[:, j]) - 2, 1)
+        freedom[j] = max(int(np.count_nonzero(amounts[:, j])) - 2, 1)
     return ErrorModel(absolute, relative, freedom)
 
 
@@ -94,7 +94,7 @@ def outlying(errors: FloatArray, model: ErrorModel, amounts: FloatArray) -> Bool
 
 
 def bent(errors: FloatArray, amounts: FloatArray) -> FloatArray:
-    """p value, component by component, that its errors bend with the amount (t test of a quadratic term).
+    """P value, component by component, that its errors bend with the amount (t test of a quadratic term).
 
     Parameters
     ----------

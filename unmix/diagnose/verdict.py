@@ -29,6 +29,10 @@ _PRESENT = 5.0
 #: standard uncertainties below zero at which a negative amount says that the model is wrong
 NEGATIVE_LIMIT = 4.0
 
+#: noise is correlated over at most this part of the channels, or over this many
+_SLOW = 15.0
+_SLOWEST = 14.0
+
 #: bands named in a reason; the rest are counted
 _NAMED_BANDS = 3
 
@@ -43,7 +47,8 @@ class Words:
 
     def amount(self, value: float) -> str:
         """An amount with its unit, three significant digits."""
-        return f"{value:.3g} {self.amount_unit}".strip() if self.amount_unit != "1" else f"{value:.3g}"
+        number = plain_number(value, 3)
+        return f"{number} {self.amount_unit}".strip() if self.amount_unit != "1" else number
 
 
 @dataclass(frozen=True)
@@ -78,6 +83,10 @@ class Evidence:
     stray: float = 0.0
     growth: float = 1.0
     excess: float = float("nan")
+    unbounded: FloatArray = field(default_factory=lambda: np.zeros(0))
+    correlation_length: float = 1.0
+    blank: bool = False
+    negative_share: float = 0.0
     freedom: float = float("inf")
     noise_level: float = float("nan")
     noise_given: float | None = None
@@ -146,8 +155,7 @@ def _confusion(evidence: Evidence, words: Words) -> list[tuple[int, str]]:
         share = float(np.max(half)) / total if total > 0 else float("inf")
         worst = words.components[members[int(np.argmax(half))]]
         if index >= _EXCHANGEABLE:
-            detail = f"an error of {100 / index:.1g}% in a pure spectrum would be enough to exchange them"
-            found.append((2, f"{who} cannot be told apart in these channels ({tail}): {detail}."))
+            found.append((2, f"{who} cannot be told apart in these channels ({tail}){_exchange(index)}."))
         elif share > _DOUBTFUL_SHARE:
             hardly, grade = ("can hardly", 1) if share <= _UNSUPPORTED_SHARE else ("cannot", 2)
             detail = f"the interval of {worst} reaches {share:.0%} of their common signal up and down"
@@ -178,7 +186,9 @@ def _misfit(evidence: Evidence, words: Words) -> list[tuple[int, str]]:
         harmed = int(np.argmax(np.abs(band.shift))) if band.shift.size else -1
         harm = (f"; it could move {words.components[harmed]} by up to {words.amount(abs(float(band.shift[harmed])))}"
                 if harmed >= 0 else "")  # fmt: skip
-        place = f"{band.position:.5g} {words.axis_unit}, about {band.width:.2g} {words.axis_unit} wide,"
+        unit = words.axis_unit
+        place = (f"{plain_number(band.position, 5)} {unit}, about {plain_number(band.width, 2)} {unit} "
+                 "wide,")
         if band.height > 0:
             text = f"A band at {place} is not explained (z = {band.score:.0f}){harm}."
         else:
@@ -196,17 +206,31 @@ def _misfit(evidence: Evidence, words: Words) -> list[tuple[int, str]]:
 
 
 def _negative(evidence: Evidence, words: Words) -> list[tuple[int, str]]:
-    low = np.flatnonzero(evidence.negative < -NEGATIVE_LIMIT)
-    return [
-        (1, f"The best fit would need less than none of {words.components[j]} "
-            f"({-evidence.negative[j]:.1f} standard uncertainties below zero): a pure spectrum or the list is wrong.")
-        for j in low
-    ]  # fmt: skip
+    found = []
+    if evidence.negative_share > 0.5:
+        found.append((1, "Most of the spectrum is below zero, which no sample can be: look at the reference "
+                         "measurement and at the unit."))  # fmt: skip
+    strongest = float(np.max(evidence.concentration * evidence.signal_length, initial=0.0))
+    for j in np.flatnonzero(evidence.negative < -NEGATIVE_LIMIT):
+        below = -float(evidence.unbounded[j] * evidence.signal_length[j]) if evidence.unbounded.size else 0.0
+        found.append((
+            2 if below > 0.5 * strongest else 1,
+            f"The best fit would need less than none of {words.components[j]} ({-evidence.negative[j]:.1f} standard "
+            "uncertainties below zero): a pure spectrum or the list is wrong.",
+        ))  # fmt: skip
+    return found
 
 
 def _noise(evidence: Evidence) -> list[tuple[int, str]]:
+    if evidence.blank and not evidence.detected.any():
+        return [(1, "The spectrum is a straight line to the last digit, so nothing was measured and the noise is not "
+                    "known.")]  # fmt: skip
+    slow = evidence.channels_used / _SLOW
+    if evidence.correlation_length > max(slow, _SLOWEST):
+        return [(1, f"The residual changes so slowly (over {evidence.correlation_length:.0f} of "
+                    f"{evidence.channels_used} channels) that it can hardly be noise.")]  # fmt: skip
     if evidence.excess > 1.0:
-        return [(1, f"The residual is {evidence.excess:.1f} times as large as any of the standards' is expected to be.")]
+        return [(1, f"The residual is {evidence.excess:.1f} times as large as that of a standard is expected to be.")]
     if evidence.freedom <= 0 and evidence.noise_given is None:
         return [(1, f"{evidence.channels_used} channels for {evidence.n_terms} unknowns leave nothing to judge the "
                     "noise by, so there is no interval; give the noise level.")]  # fmt: skip
@@ -249,8 +273,7 @@ def judge_design(
     for index, members in groups:
         who = _who([names[j] for j in members])
         if index >= _EXCHANGEABLE:
-            found.append((2, f"{who} cannot be told apart in these channels ({_tail(index)}): an error of "
-                             f"{100 / index:.1g}% in a pure spectrum would be enough to exchange them."))  # fmt: skip
+            found.append((2, f"{who} cannot be told apart in these channels ({_tail(index)}){_exchange(index)}."))
         else:
             found.append((1, f"{who} can hardly be told apart in these channels ({_tail(index)})."))
     return VERDICTS[max(grade for grade, _ in found)], " ".join(text for _, text in found)
@@ -264,3 +287,16 @@ def _who(names: list[str]) -> str:
 
 def _tail(index: float) -> str:
     return f"condition index {index:.3g}" if index < 1e10 else "their spectra are the same up to a factor"
+
+
+def _exchange(index: float) -> str:
+    if index >= 1e10:
+        return ""
+    return f": an error of {plain_number(100 / index, 1)}% in a pure spectrum would be enough to exchange them"
+
+
+def plain_number(value: float, digits: int) -> str:
+    """A number with so many significant digits, without an exponent unless it is far from one."""
+    if value != 0 and np.isfinite(value) and 1e-5 <= abs(value) < 1e7:
+        return np.format_float_positional(value, precision=digits, fractional=False, trim="-")
+    return f"{value:.{digits}g}"

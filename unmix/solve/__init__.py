@@ -1,5 +1,26 @@
-"""One module a question: the estimator first, below it the public function."""
+"""One module a question: the estimator first, below it the public function.
 
-from unmix.solve.known import KnownSpectra
+Estimators are loaded on first use, so that a function that needs none of them does not wait for scikit-learn.
+"""
+
+from importlib import import_module
+from typing import TYPE_CHECKING, Any
+
+if TYPE_CHECKING:
+    from unmix.solve.estimator import KnownSpectra
+
+#: estimator -> the module that holds it
+_HOMES = {"KnownSpectra": "unmix.solve.estimator"}
 
 __all__ = ["KnownSpectra"]
+
+
+def __getattr__(name: str) -> Any:
+    home = _HOMES.get(name)
+    if home is None:
+        raise AttributeError(f"module 'unmix.solve' has no attribute '{name}'; it has {', '.join(__all__)}")
+    return getattr(import_module(home), name)
+
+
+def __dir__() -> list[str]:
+    return list(__all__)

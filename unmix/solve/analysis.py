@@ -25,6 +25,7 @@ def analyse(
     pure_uncertainty: FloatArray,
     settings: Settings,
     progress: Progress | None = None,
+    n_baseline: int | None = None,
 ) -> Answer:
     """Solve every spectrum and judge its fit.
 
@@ -41,6 +42,8 @@ def analyse(
         Relative standard uncertainty of each pure spectrum.
     settings : Settings
     progress : callable, optional
+    n_baseline : int, optional
+        How many of the free terms, from the first, are baseline; all by default.
 
     Returns
     -------
@@ -62,7 +65,7 @@ def analyse(
         groups = dependent_groups(design_figures(signal[used] * scale, free[used] * scale), k)
         for row in rows:
             answer.groups[row] = groups
-        solver = Pattern(signal, free, shared, pure_uncertainty, settings)
+        solver = Pattern(signal, free, shared, pure_uncertainty, settings, n_baseline)
         for start in range(0, rows.size, CHUNK):
             part = rows[start : start + CHUNK]
             solver.solve(np.where(used, y[part], 0.0), part, answer)

@@ -14,17 +14,19 @@ class Settings:
     """Options of the analysis.
 
     ``known_noise`` says that the weights are one over known standard deviations; otherwise they are relative, and the
-    level and correlation of the noise are found from each residual.
+    level and correlation of the noise are found from each residual. ``resolution`` is the rounding of the numbers
+    relative to the largest of a spectrum.
     """
 
     level: float = 0.95
     nonnegative: bool = True
     known_noise: bool = False
+    resolution: float = 1e-12
 
 
 #: arrays of an answer by shape: amounts (spectra, components), curves (spectra, channels), figures (spectra,)
 AMOUNTS = ("concentration", "standard_uncertainty", "lower", "upper", "critical_level", "detection_limit",
-           "quantification_limit", "misfit_harm", "negative")  # fmt: skip
+           "quantification_limit", "misfit_harm", "negative", "unbounded")  # fmt: skip
 CURVES = ("fitted", "baseline")
 FIGURES = (
     "noise_level",
@@ -43,7 +45,8 @@ class Answer:
     """Arrays of the answer, one row a spectrum, NaN where a spectrum could not be answered.
 
     Shapes: (spectra, components) for the amounts, (spectra, channels) for curves, (spectra,) for the rest.
-    ``used`` tells the channels that the last fit of a spectrum rests on. Amounts are per unit path; ``bands`` holds positions and widths in channels.
+    ``used`` tells the channels that the last fit of a spectrum rests on. Amounts are per unit path; ``bands`` holds
+    positions and widths in channels.
     """
 
     concentration: FloatArray
@@ -55,6 +58,7 @@ class Answer:
     quantification_limit: FloatArray
     misfit_harm: FloatArray
     negative: FloatArray
+    unbounded: FloatArray
     fitted: FloatArray
     baseline: FloatArray
     noise_level: FloatArray
@@ -66,6 +70,7 @@ class Answer:
     residual_excess: FloatArray
     stray_light: FloatArray
     used: BoolArray
+    blank: BoolArray
     bands: list[Bands | None]
     groups: list[list[tuple[float, list[int]]]]
 
@@ -74,11 +79,17 @@ class Answer:
         """All NaN, no bands."""
         shapes = dict.fromkeys(AMOUNTS, (n, k)) | dict.fromkeys(CURVES, (n, p)) | dict.fromkeys(FIGURES, (n,))
         arrays: dict[str, Any] = {name: np.full(shape, np.nan) for name, shape in shapes.items()}
-        return cls(**arrays, used=np.zeros((n, p), dtype=bool), bands=[None] * n, groups=[[] for _ in range(n)])
+        return cls(
+            **arrays,
+            used=np.zeros((n, p), dtype=bool),
+            blank=np.zeros(n, dtype=bool),
+            bands=[None] * n,
+            groups=[[] for _ in range(n)],
+        )
 
     def put(self, row: int, one: "Answer") -> None:
         """Replace a row by the only row of another answer."""
         for name in (*AMOUNTS, *CURVES, *FIGURES):
             getattr(self, name)[row] = getattr(one, name)[0]
-        self.used[row] = one.used[0]
+        self.used[row], self.blank[row] = one.used[0], one.blank[0]
         self.bands[row], self.groups[row] = one.bands[0], one.groups[0]

@@ -1,7 +1,7 @@
 """Amounts from learnt pure spectra: the fit in the metric of the between-sample variation, errors from standards."""
 
 import json
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from typing import Any
 
 import numpy as np
@@ -31,7 +31,7 @@ from unmix.solve.analysis import Progress, patterns
 from unmix.solve.answer import Answer
 from unmix.solve.options import check_level
 from unmix.solve.paths import path_of, scale_to_path
-from unmix.solve.result import assemble
+from unmix.solve.result import assemble, check_coordinates
 from unmix.spectra import as_absorbance
 
 
@@ -56,17 +56,18 @@ class MetricFilter:
         rows = np.zeros((self.metric.hidden.size, self.used.size))
         rows[:, self.used] = self.metric.directions * np.sqrt(self.metric.hidden)[:, None]
         whole: FloatArray = template_energy(self.used.astype(float), t, 1)[0]
-        return whole - np.sum(correlate(rows, t).astype(np.float64) ** 2, axis=0)
+        left: FloatArray = whole - np.sum(correlate(rows, t).astype(np.float64) ** 2, axis=0)
+        return left
 
 
 @dataclass
-class LearntSpectra:
-    """Learnt pure spectra with the errors of left-out standards, solving as :class:`KnownSpectra` does.
+class LearntModel:
+    """Learnt pure spectra with the errors of left-out standards, solving as :class:`KnownModel` does.
 
     ``score_limit`` and ``residual_limit`` are what standards reach when left out (99%).
     """
 
-    pure_: FloatArray
+    pure: FloatArray
     modes: FloatArray
     floor: float
     errors: ErrorModel
@@ -74,36 +75,40 @@ class LearntSpectra:
     residual_limit: float
     level: float
     nonnegative: bool = True
-    baseline: int | None = None
-    noise: Any = None
+    noise: FloatArray | None = None
+    free: FloatArray = field(init=False)
+
+    def __post_init__(self) -> None:
+        self.free = np.empty((self.pure.shape[1], 0))
 
     def analyse(
         self,
-        X: FloatArray,
+        y: FloatArray,
         used: BoolArray,
         *,
-        pure_uncertainty: Any = 0.0,
+        pure_uncertainty: FloatArray | float = 0.0,
+        resolution: float = 1e-12,  # noqa: ARG002  errors of standards are far above rounding
         detect_saturation: bool = False,
         progress: Progress | None = None,
     ) -> Answer:
-        """Amounts with intervals, limits, fit and misfit, as plain arrays (see :class:`KnownSpectra`)."""
-        learnt = Learnt(np.nan_to_num(self.pure_), np.nan_to_num(self.modes), self.floor)
-        answer = Answer.empty(X.shape[0], self.pure_.shape[0], X.shape[1])
-        bent, plateau = np.zeros(X.shape, dtype=bool), np.full(X.shape[0], np.nan)
+        """Amounts with intervals, limits, fit and misfit, as plain arrays (see :class:`KnownModel`)."""
+        learnt = Learnt(np.nan_to_num(self.pure), np.nan_to_num(self.modes), self.floor)
+        answer = Answer.empty(y.shape[0], self.pure.shape[0], y.shape[1])
+        bent, plateau = np.zeros(y.shape, dtype=bool), np.full(y.shape[0], np.nan)
         if detect_saturation:
-            bent, plateau = saturated(np.where(used, X, np.nan))
+            bent, plateau = saturated(np.where(used, y, np.nan))
         answer.stray_light[:] = np.nan_to_num(10.0**-plateau)
         answer.residual_growth[:] = 1.0
-        complete = np.isfinite(self.pure_).all(axis=0)
+        complete: BoolArray = np.isfinite(self.pure).all(axis=0)
         reference = self._reach(learnt, complete)
         done = 0
         for rows, weight in patterns((used & ~bent & complete).astype(float)):
-            pattern = weight != 0
-            if pattern.sum() > self.pure_.shape[0]:
+            pattern = np.asarray(weight, dtype=bool)
+            if pattern.sum() > self.pure.shape[0]:
                 widening = self._reach(learnt, pattern) / reference
                 for start in range(0, rows.size, CHUNK):
                     part = rows[start : start + CHUNK]
-                    self._solve(learnt, np.where(pattern, X[part], 0.0), pattern, widening, part, answer)
+                    self._solve(learnt, np.where(pattern, y[part], 0.0), pattern, widening, part, answer)
             done += rows.size
             if progress:
                 progress(done)
@@ -140,7 +145,7 @@ class LearntSpectra:
         answer.critical_level[rows], answer.detection_limit[rows] = found.critical, found.detection
         answer.quantification_limit[rows] = found.quantification
         answer.misfit_harm[rows] = harm
-        answer.negative[rows] = 0.0
+        answer.negative[rows], answer.unbounded[rows] = 0.0, reported
         answer.baseline[rows] = 0.0
         answer.fitted[rows] = solved.solution @ learnt.pure
         rest = np.where(used, y - answer.fitted[rows], 0.0)
@@ -153,9 +158,7 @@ class LearntSpectra:
         for row, one in zip(rows, bands, strict=True):
             answer.bands[row] = one
 
-    def _misfit(
-        self, solved: GlsFit, filters: MetricFilter, freedom: float
-    ) -> tuple[FloatArray, list[Bands | None]]:
+    def _misfit(self, solved: GlsFit, filters: MetricFilter, freedom: float) -> tuple[FloatArray, list[Bands | None]]:
         t = templates(filters.used.size)
         energy = filters.energy(t)
         projected = np.sum(correlate(filters.transpose(solved.basis[0]), t) ** 2, axis=0)
@@ -194,6 +197,7 @@ def quantify_learnt(
                          accepted="give them to learn_pure")  # fmt: skip
     check_level(level)
     samples, assumptions = as_absorbance(spectra, name="spectra")
+    samples = check_coordinates(samples)
     given = samples
     k = learnt.sizes["component"]
     samples, rows, notes = common_axis(samples, _stacked(learnt))
@@ -202,7 +206,7 @@ def quantify_learnt(
     pure = scale_to_path(known, paths)
     errors = ErrorModel(*(learnt[f"error_{name}"].values for name in ("absolute", "relative", "freedom")))
     errors = errors._replace(absolute=errors.absolute * paths.weight)
-    solver = LearntSpectra(pure, rows.values[k:], float(learnt["floor"]), errors, float(learnt["score_limit"]),
+    solver = LearntModel(pure, rows.values[k:], float(learnt["floor"]), errors, float(learnt["score_limit"]),
                            float(learnt["residual_limit"]), level, nonnegative)  # fmt: skip
     n = learnt.sizes["sample"]
     result = assemble(samples, known, solver, paths, progress)

@@ -3,8 +3,10 @@
 from typing import Any
 
 import numpy as np
+import xarray as xr
 
 from unmix.errors import InputError
+from unmix.spectra import spectral_dim
 
 
 def check_baseline(baseline: Any) -> None:
@@ -33,3 +35,28 @@ def check_noise(noise: Any) -> None:
     if not (np.isfinite(values).all() and (values > 0).all()):
         shown = noise if np.ndim(noise) == 0 else "an array with values at or below zero or missing"
         raise InputError(f"noise is {shown!r}", accepted="give a standard deviation above zero, one or one a channel")
+
+
+def check_flag(name: str, value: Any) -> None:
+    """Raise InputError unless the value is True or False."""
+    if not isinstance(value, (bool, np.bool_)):
+        raise InputError(f"{name} is {value!r}", accepted="give True or False")
+
+
+def noise_of_channels(noise: Any, spectra: xr.DataArray) -> xr.DataArray | None:
+    """Known noise as one standard deviation a channel of the spectra as given; None stays None.
+
+    Raises
+    ------
+    InputError
+        When it is neither one number nor one for every channel, or not above zero.
+    """
+    check_noise(noise)
+    if noise is None:
+        return None
+    axis = spectra[spectral_dim(spectra)]
+    values = np.asarray(noise, dtype=float)
+    if values.ndim > 1 or (values.ndim == 1 and values.size not in (1, axis.size)):
+        raise InputError(f"noise has shape {values.shape} but the spectra have {axis.size} channels",
+                         accepted="give one standard deviation, or one for every channel of the spectra")  # fmt: skip
+    return xr.DataArray(np.broadcast_to(values, axis.shape), dims=axis.dims, coords={axis.name: axis.values})

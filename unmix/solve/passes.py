@@ -103,7 +103,9 @@ def solve(
     straight = used & ~light.bent
     growth = _GROWTH[light.model]
     quiet = growth == 0 and not np.isfinite(light.plateau).any()
-    answer = analyse(y, np.where(straight, weight, 0.0), signal, free, pure_uncertainty, settings, progress if quiet else None)
+    answer = analyse(
+        y, np.where(straight, weight, 0.0), signal, free, pure_uncertainty, settings, progress if quiet else None
+    )
     answer.residual_growth[:] = _residual_growth(y, straight, answer.fitted)
     answer.stray_light[:] = np.nan_to_num(10.0**-light.plateau)
     columns = np.hstack([free, signal])
@@ -147,14 +149,13 @@ def _again(
     bent = np.where(_with_stray(dark, stray) > -np.log10(stray) - _BENT, 0.0, row)
     row = bent if (bent != 0).sum() > columns.shape[1] + 1 else row
     with_stray = np.hstack([free, (stray * (10.0**dark - 1.0))[:, None]])
-    one = analyse(_without_stray(y[None], stray), row[None], signal, with_stray, pure_uncertainty, settings)
-    one.fitted[0], one.baseline[0] = _with_stray(one.fitted[0], stray), _with_stray(one.baseline[0], stray)
+    one = analyse(_without_stray(y[None], stray), row[None], signal, with_stray, pure_uncertainty, settings,
+                  n_baseline=n_free)  # fmt: skip
+    one.fitted[0] = _with_stray(one.fitted[0], stray)
     return one
 
 
-def _stray_of(
-    i: int, y: FloatArray, used: BoolArray, columns: FloatArray, answer: Answer, light: Light
-) -> float:
+def _stray_of(i: int, y: FloatArray, used: BoolArray, columns: FloatArray, answer: Answer, light: Light) -> float:
     """Share of stray light of a spectrum, 0 where the data do not ask for it."""
     flat = np.isfinite(light.plateau[i])
     suspicious = answer.residual_growth[i] > GROWING or abs(answer.misfit_z[i]) > answer.misfit_limit[i]

@@ -57,7 +57,11 @@ def path_of(samples: xr.DataArray, pure: xr.DataArray, path_length: Any) -> Path
         if pure_quantity != "absorptivity":
             raise UnitError("the spectra hold absorptivity but the pure spectra absorbance",
                             accepted="give both as absorptivity, or the spectra as absorbance")  # fmt: skip
-        return Paths(np.ones(n), np.ones(k), unit, assumptions)
+        own_per = str(samples.attrs.get("per", pure.attrs.get("per", "1")))
+        if split_per(own_per) != split_per(str(pure.attrs.get("per", "1"))):
+            raise UnitError(f"the spectra hold absorptivity per '{own_per}' but the pure spectra per "
+                            f"'{pure.attrs.get('per', '1')}'", accepted="give both per the same amount")  # fmt: skip
+        return Paths(np.ones(n), np.ones(k), "1", assumptions)
     if pure_quantity == "absorptivity":
         if lengths is None:
             assumptions.append("no path length was given for the samples; taken as 1 cm")
@@ -94,13 +98,18 @@ def _sample_lengths(samples: xr.DataArray, path_length: Any, n: int) -> tuple[Fl
     found = samples.coords.get("path_length", samples.attrs.get("path_length"))
     if found is None:
         return None, ""
-    values = found.values if isinstance(found, xr.DataArray) else found
-    lengths = np.ravel(np.asarray(values, dtype=float))
-    if np.isnan(lengths).all():
+    if isinstance(found, xr.DataArray):
+        leading = samples.isel({samples.dims[-1]: 0}, drop=True)
+        values = found.broadcast_like(leading).transpose(*leading.dims).values.ravel()
+    else:
+        values = np.full(n, found)
+    if all(_missing(one) for one in values):
         return None, ""
-    for one in lengths:
-        length_in_cm(one, name="path_length of the spectra")
-    return (np.full(n, lengths[0]) if lengths.size == 1 else lengths), "samples"
+    return np.array([length_in_cm(one, name="path_length of the spectra") for one in values]), "samples"
+
+
+def _missing(length: Any) -> bool:
+    return isinstance(length, (float, np.floating)) and bool(np.isnan(length))
 
 
 def _pure_lengths(pure: xr.DataArray, k: int) -> FloatArray | None:

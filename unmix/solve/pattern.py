@@ -38,6 +38,8 @@ class Pattern:
         Zero on channels that do not count.
     pure_uncertainty : ndarray, shape (components,)
     settings : Settings
+    n_baseline : int, optional
+        How many of the free columns, from the first, are baseline; all by default.
     """
 
     def __init__(
@@ -47,11 +49,13 @@ class Pattern:
         weight: FloatArray,
         pure_uncertainty: FloatArray,
         settings: Settings,
+        n_baseline: int | None = None,
     ) -> None:
         self.settings = settings
         self.pure_uncertainty = pure_uncertainty
         self.columns = np.hstack([free, signal])
         self.n_free = free.shape[1]
+        self.n_baseline = self.n_free if n_baseline is None else n_baseline
         self.weight = weight
         self._strides: dict[int, _Strided] = {}
 
@@ -77,6 +81,7 @@ class Pattern:
         """
         known = self.settings.known_noise
         y = y * self.weight
+        top = np.abs(y).max(axis=1, initial=0.0)
         whole = self.strided(1)
         stride = np.ones(rows.size, dtype=int) if known else independent_stride(y, whole.design)
         fewest = self.columns.shape[1] + FEWEST_FREEDOM
@@ -85,12 +90,17 @@ class Pattern:
             if step > 1 and int(shared.design.used.sum()) < fewest:
                 shared, step = whole, 1  # too few channels would be left
             for group, solved in fit(y[part][:, ::step], shared.design, correlated=not known):
-                self._write(solved, shared, step, rows[part[group]], answer)
+                self._write(solved, shared, step, rows[part[group]], top[part[group]], answer)
 
-    def _write(self, solved: GlsFit, shared: "_Strided", stride: int, rows: IntArray, answer: Answer) -> None:
+    def _write(
+        self, solved: GlsFit, shared: "_Strided", stride: int, rows: IntArray, largest_value: FloatArray, answer: Answer
+    ) -> None:
         f, settings = self.n_free, self.settings
         freedom = float(shared.design.freedom)
-        sigma = np.ones(rows.size) if settings.known_noise else solved.sigma
+        # a residual below the rounding of the numbers is no noise, and must not make rounding a misfit
+        rounding = settings.resolution * largest_value
+        sigma = np.ones(rows.size) if settings.known_noise else np.maximum(solved.sigma, rounding)
+        answer.blank[rows] = solved.sigma <= rounding
         trust = np.asarray(np.inf if settings.known_noise else freedom)
         relative = np.linalg.norm(solved.factor[:, f:], axis=2)
         with np.errstate(invalid="ignore"):
@@ -103,17 +113,17 @@ class Pattern:
         ends = interval(amounts, spread, trust, level=settings.level, reported=reported,
                         nonnegative=settings.nonnegative)  # fmt: skip
         found = limits(at_zero, trust)
-        answer.concentration[rows] = reported
+        answer.concentration[rows] = reported + 0.0  # no negative zero
         answer.standard_uncertainty[rows] = np.sqrt(spread**2 + (harm / quantile(0.5 + settings.level / 2, trust)) ** 2)
         lower = ends.lower - harm
         answer.lower[rows] = np.maximum(lower, 0.0) if settings.nonnegative else lower
         answer.upper[rows] = ends.upper + harm
         answer.critical_level[rows], answer.detection_limit[rows] = found.critical, found.detection
         answer.quantification_limit[rows] = found.quantification
-        answer.misfit_harm[rows] = harm
+        answer.misfit_harm[rows], answer.unbounded[rows] = harm, amounts
         with np.errstate(invalid="ignore", divide="ignore"):
             answer.negative[rows] = np.where(at_zero > 0, amounts / at_zero, 0.0)
-        answer.baseline[rows] = solved.solution[:, :f] @ self.columns[:, :f].T
+        answer.baseline[rows] = solved.solution[:, : self.n_baseline] @ self.columns[:, : self.n_baseline].T
         answer.fitted[rows] = solved.solution @ self.columns.T
         answer.noise_level[rows] = _channel_noise(solved) * float(np.median(1.0 / self.weight[self.weight != 0]))
         answer.noise_correlation_length[rows] = solved.length * stride
@@ -122,7 +132,7 @@ class Pattern:
         for row, one in zip(rows, bands, strict=True):
             if one is not None:
                 answer.bands[row] = one._replace(channel=one.channel * stride, width=one.width * stride,
-                                                 shift=one.shift[:, f:])  # fmt: skip
+                                                 shift=_finite(one.shift[:, f:]))  # fmt: skip
 
 
 def _channel_noise(solved: GlsFit) -> FloatArray:
@@ -178,7 +188,7 @@ class _Strided:
         score, _ = largest(along / denominators(energy, projected, self.templates) / safe[:, None])
         bands: list[Bands | None] = [None] * n
         for i in np.flatnonzero(np.abs(score) > limit):
-            bands[i] = unexplained_bands(self.one(solved, i, energy), self.templates, limit)
+            bands[i] = unexplained_bands(self.one(solved, int(i), energy), self.templates, limit)
         return score, bands
 
     def one(self, solved: GlsFit, i: int, energy: FloatArray) -> Whitened:
@@ -193,9 +203,7 @@ class _Strided:
         )
 
 
-def _harm(
-    solved: GlsFit, shared: _Strided, bands: list[Bands | None], f: int
-) -> tuple[FloatArray, FloatArray]:
+def _harm(solved: GlsFit, shared: _Strided, bands: list[Bands | None], f: int) -> tuple[FloatArray, FloatArray]:
     """Harm of the unexplained bands to each amount, and the uncertainty from a structured residual.
 
     The second carries the residual's own autocovariance at all lags through the map from data to amounts; both are
@@ -206,7 +214,7 @@ def _harm(
     for i, found in enumerate(bands):
         if found is None or found.channel.size == 0:
             continue
-        shift = found.shift[:, f:]
+        shift = _finite(found.shift[:, f:])
         harm[i] = np.maximum(np.abs(shift.sum(axis=0)), np.abs(shift).max(axis=0))
         filters = FilterPair(solved.filter[i : i + 1], shared.design.weight)
         factor = solved.factor[min(i, solved.factor.shape[0] - 1), f:]
@@ -220,3 +228,9 @@ def _harm(
         weights[[0, -1]] = 1.0
         structured[i] = np.sqrt((gain * power * weights).sum(axis=1) / size)
     return harm, structured
+
+
+def _finite(shift: FloatArray) -> FloatArray:
+    """Shifts of amounts, zero for a component that the design does not determine: its interval is infinite anyway."""
+    known: FloatArray = np.nan_to_num(shift, posinf=0.0, neginf=0.0)
+    return known

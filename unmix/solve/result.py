@@ -1,6 +1,6 @@
 """Put labels, units, verdicts and reasons on the arrays of an answer."""
 
-from typing import TYPE_CHECKING, Any, TypeAlias
+from typing import Any
 
 import numpy as np
 import xarray as xr
@@ -8,19 +8,14 @@ import xarray as xr
 from unmix.diagnose.conditioning import design_figures
 from unmix.diagnose.residual import Bands
 from unmix.diagnose.verdict import Band, Evidence, Words, judge
+from unmix.errors import InputError, listed
 from unmix.kernels import FloatArray
-from unmix.kernels.linalg import polynomial_terms
 from unmix.solve.analysis import Progress
 from unmix.solve.answer import Answer
+from unmix.solve.model import Solver
 from unmix.solve.paths import Paths
 from unmix.spectra import rows_of, spectral_dim
 from unmix.units import SPECTRAL_UNITS
-
-if TYPE_CHECKING:
-    from unmix.solve.known import KnownSpectra
-    from unmix.solve.learnt import LearntSpectra
-
-    Solver: TypeAlias = KnownSpectra | LearntSpectra
 
 #: shown wherever a result is shown
 CAUTION = (
@@ -46,6 +41,15 @@ _AMOUNTS = {
     "misfit_harm": "Possible shift by unexplained bands, included in the interval",
 }
 
+#: variables of the result whose names a coordinate must not have
+RESERVED = frozenset({
+    *_AMOUNTS, "detected", "measured", "fitted", "residual", "baseline", "used", "noise_level",
+    "noise_correlation_length", "misfit_z", "misfit_limit", "stray_light", "channels_used", "channels_missing",
+    "channels_saturated", "effective_channels", "lack_of_fit", "path_factor", "verdict", "reason", "misfit_position",
+    "misfit_width", "misfit_height", "misfit_score", "pure_signal", "variance_inflation", "selectivity",
+    "confused_with", "condition_index", "component",
+})  # fmt: skip
+
 _FIGURES = {
     "noise_level": ("Standard deviation of the noise of one channel", "signal"),
     "noise_correlation_length": ("Correlation length of the noise", "channels"),
@@ -58,7 +62,7 @@ _FIGURES = {
 def assemble(
     samples: xr.DataArray,
     pure: xr.DataArray,
-    estimator: "Solver",
+    solver: Solver,
     paths: Paths,
     progress: Progress | None,
 ) -> xr.Dataset:
@@ -69,8 +73,8 @@ def assemble(
     samples : DataArray, dims (..., spectral)
     pure : DataArray, dims (component, spectral)
         On the same channels.
-    estimator : KnownSpectra or LearntSpectra
-        Fitted to the pure spectra per unit path.
+    solver : Solver
+        With the pure spectra per unit path.
     paths : Paths
     progress : callable or None
 
@@ -78,33 +82,60 @@ def assemble(
     -------
     Dataset
     """
+    single = samples.dtype == np.float32
     rows = np.asarray(rows_of(samples), dtype=np.float64)
     present = np.isfinite(rows)
-    usable = np.isfinite(estimator.pure_).all(axis=0)
+    usable = np.isfinite(solver.pure).all(axis=0)
     given = present & usable
     uncertainty = _relative_uncertainty(pure)
-    answer = estimator.analyse(rows, given, pure_uncertainty=uncertainty,
-                               detect_saturation=samples.attrs.get("quantity") == "absorbance", progress=progress)  # fmt: skip
+    bends = samples.attrs.get("quantity") == "absorbance"
+    answer = solver.analyse(rows, given, pure_uncertainty=uncertainty,
+                               resolution=1e-6 if single else 1e-12,
+                               detect_saturation=bends, progress=progress)  # fmt: skip
     _per_path(answer, paths.factor)
     words = Words([str(c) for c in pure["component"].values], paths.amount_unit, SPECTRAL_UNITS[spectral_dim(samples)])
     lost_light = samples.attrs.get("measured_as") == "transmittance"
     judged = []
     for i in range(rows.shape[0]):
         missing = int((~present[i]).sum())
-        evidence = _evidence(answer, i, samples, estimator, paths)
+        evidence = _evidence(answer, i, samples, solver, paths)
         bent = answer.stray_light[i] > 0
         evidence.plateau = -float(np.log10(answer.stray_light[i])) if bent else np.nan
         evidence.channels_saturated = int((given[i] & ~answer.used[i]).sum() if bent else 0)
         evidence.channels_saturated += missing if lost_light else 0
         evidence.channels_missing = 0 if lost_light else missing
+        evidence.blank = bool(answer.blank[i])
+        evidence.negative_share = float(np.mean(rows[i, answer.used[i]] < -0.05)) if answer.used[i].any() else 0.0
         judged.append((*judge(evidence, words), evidence))
-    return _dataset(samples, pure, estimator, paths, answer, judged)
+    return _dataset(samples, pure, solver, paths, answer, judged)
+
+
+def check_coordinates(samples: xr.DataArray) -> xr.DataArray:
+    """Samples whose coordinates leave the names of a result free; a leading ``component`` becomes ``sample``.
+
+    Raises
+    ------
+    InputError
+        When a coordinate has the name of a variable of the result.
+    """
+    if "component" in samples.dims:
+        samples = samples.rename(component="sample")
+    taken = [str(name) for name in samples.coords if name in RESERVED]
+    if taken:
+        raise InputError(f"the spectra have a coordinate {listed(taken)}, the name of a variable of the result",
+                         accepted="rename it, for example to known_concentration")  # fmt: skip
+    return samples
 
 
 def _relative_uncertainty(pure: xr.DataArray) -> FloatArray:
     if "relative_uncertainty" not in pure.coords:
         return np.zeros(pure.sizes["component"])
-    given: FloatArray = np.nan_to_num(np.asarray(pure["relative_uncertainty"].values, dtype=float))
+    given: FloatArray = np.asarray(pure["relative_uncertainty"].values, dtype=float)
+    bad = ~(np.isfinite(given) & (given >= 0))
+    if bad.any():
+        j = int(bad.argmax())
+        raise InputError(f"relative_uncertainty of pure spectrum '{pure['component'].values[j]}' is {given[j]:g}",
+                         accepted="give a standard uncertainty as a fraction, 0 where it is known exactly")  # fmt: skip
     return given
 
 
@@ -118,12 +149,9 @@ def _per_path(answer: Answer, factor: FloatArray) -> None:
             answer.bands[i] = found._replace(shift=found.shift / factor[i])
 
 
-def _evidence(
-    answer: Answer, i: int, samples: xr.DataArray, estimator: "Solver", paths: Paths
-) -> Evidence:
+def _evidence(answer: Answer, i: int, samples: xr.DataArray, solver: Solver, paths: Paths) -> Evidence:
     axis = np.asarray(samples[spectral_dim(samples)].values, dtype=float)
-    n_terms = estimator.pure_.shape[0] + (0 if estimator.baseline is None else estimator.baseline + 1)
-    noise, used = estimator.noise, answer.used[i]
+    noise, used = solver.noise, answer.used[i]
     concentration = answer.concentration[i]
     with np.errstate(invalid="ignore"):
         detected = concentration > answer.critical_level[i]
@@ -132,8 +160,8 @@ def _evidence(
         lower=answer.lower[i],
         upper=answer.upper[i],
         detected=np.asarray(detected),
-        signal_length=np.linalg.norm(np.nan_to_num(estimator.pure_[:, used]), axis=1) * paths.factor[i],
-        n_terms=n_terms,
+        signal_length=np.linalg.norm(np.nan_to_num(solver.pure[:, used]), axis=1) * paths.factor[i],
+        n_terms=solver.pure.shape[0] + solver.free.shape[1],
         channels_used=int(used.sum()),
         freedom=float(np.nan_to_num(answer.freedom[i], nan=-1.0)),
         noise_level=float(answer.noise_level[i]),
@@ -145,7 +173,9 @@ def _evidence(
         growth=float(answer.residual_growth[i]),
         excess=float(answer.residual_excess[i]),
         stray=float(np.nan_to_num(answer.stray_light[i])),
-        negative=answer.negative[i] if estimator.nonnegative else np.zeros(0),
+        negative=answer.negative[i] if solver.nonnegative else np.zeros(0),
+        unbounded=answer.unbounded[i] / paths.factor[i],
+        correlation_length=float(answer.noise_correlation_length[i]),
         groups=answer.groups[i],
     )
 
@@ -155,15 +185,14 @@ def _bands(found: Bands | None, axis: FloatArray) -> list[Band]:
         return []
     spacing = np.abs(np.gradient(axis)) if axis.size > 1 else np.ones(1)
     return [
-        Band(float(axis[c]), float(w * spacing[c]), float(h), float(z), s)
-        for c, w, h, z, s in zip(*found, strict=True)
+        Band(float(axis[c]), float(w * spacing[c]), float(h), float(z), s) for c, w, h, z, s in zip(*found, strict=True)
     ]
 
 
 def _dataset(
     samples: xr.DataArray,
     pure: xr.DataArray,
-    estimator: "Solver",
+    solver: Solver,
     paths: Paths,
     answer: Answer,
     judged: list[tuple[str, str, Evidence]],
@@ -189,7 +218,7 @@ def _dataset(
         "measured": (measured, "Measured"),
         "fitted": (answer.fitted, "Fitted"),
         "residual": (residual, "Measured less fitted"),
-        "baseline": (answer.baseline, "Fitted baseline, with stray light where it was fitted"),
+        "baseline": (answer.baseline, "Fitted baseline"),
     }
     data |= {key: over(values, dim, name=text, units=signal_unit) for key, (values, text) in curves.items()}
     data["used"] = over(used, dim, name="Channel used in the fit")
@@ -214,7 +243,7 @@ def _dataset(
     data["verdict"] = over([v for v, _, _ in judged], name="Verdict", units="")
     data["reason"] = over([r for _, r, _ in judged], name="Reason for the verdict", units="")
     data |= _band_table(evidence, over, SPECTRAL_UNITS[dim], signal_unit)
-    data |= _design(pure, estimator, dim, signal_unit, paths)
+    data |= _design(pure, solver, dim, signal_unit, paths)
     coords = {name: c for name, c in samples.coords.items() if name != dim}
     built = xr.Dataset(data, coords={**coords, "component": pure["component"].values, dim: samples[dim]})
     return built.assign_attrs(title="Composition from known pure spectra", caution=CAUTION,
@@ -238,14 +267,10 @@ def _band_table(evidence: list[Evidence], over: Any, axis_unit: str, signal_unit
     return table
 
 
-def _design(
-    pure: xr.DataArray, estimator: "Solver", dim: str, signal_unit: str, paths: Paths
-) -> dict[str, Any]:
+def _design(pure: xr.DataArray, solver: Solver, dim: str, signal_unit: str, paths: Paths) -> dict[str, Any]:
     """Pure spectra as used and their conditioning on all usable channels."""
-    usable = np.isfinite(estimator.pure_).all(axis=0)
-    axis = np.asarray(pure[dim].values, dtype=float)
-    free = polynomial_terms(axis, estimator.baseline)[usable]
-    figures = design_figures(estimator.pure_.T[usable], free)
+    usable = np.isfinite(solver.pure).all(axis=0)
+    figures = design_figures(solver.pure.T[usable], solver.free[usable])
     names = pure["component"].values
     partner = [str(names[j]) if j >= 0 else "" for j in figures.partner]
     unit = f"{signal_unit} per {paths.amount_unit}"
@@ -254,7 +279,7 @@ def _design(
         return "component", np.asarray(values), {"long_name": text, "units": units}
 
     return {
-        "pure_signal": (("component", dim), estimator.pure_,
+        "pure_signal": (("component", dim), solver.pure,
                         {"long_name": "Pure spectrum per unit amount and path", "units": unit}),
         "variance_inflation": along(figures.inflation, "Variance inflation by overlap"),
         "selectivity": along(figures.selectivity, "Share of the pure spectrum that is its own"),

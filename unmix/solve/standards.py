@@ -14,7 +14,7 @@ from unmix.kernels.noise import local_noise
 from unmix.kernels.variation import choose_floor, learn, leave_out, like_groups
 from unmix.prepare.axis import select_regions
 from unmix.provenance import provenance
-from unmix.solve.learnt import LearntSpectra
+from unmix.solve.learnt import LearntModel
 from unmix.spectra import as_absorbance, labels_of, rows_of, spectral_dim
 from unmix.units import SPECTRAL_UNITS
 
@@ -98,7 +98,7 @@ def learn_pure(
     alone = leave_out(values, c, floor, singles)
     model = error_model([alone, grouped], c)
     learnt = learn(values, c, floor)
-    solver = LearntSpectra(learnt.pure, learnt.modes, floor, model, np.inf, 1.0, 0.95)
+    solver = LearntModel(learnt.pure, learnt.modes, floor, model, np.inf, 1.0, 0.95)
     scores, sizes = _left_out_fit(values, c, floor, solver)
     out = outlying(alone - c, model, c)
     p = bent(alone - c, c)
@@ -207,7 +207,7 @@ def _numbers(table: pd.DataFrame) -> pd.DataFrame:
         numbers = pd.to_numeric(table[name], errors="coerce")
         bad = numbers.isna() | (numbers < 0)
         if bad.any():
-            row = table.index[bad.to_numpy().argmax()]
+            row = table.index[int(bad.to_numpy().argmax())]
             raise InputError(f"amounts: '{table.loc[row, name]}' for '{name}' in sample '{row}'",
                              accepted="give a number that is not negative, 0 where there is none")  # fmt: skip
     return table.astype(float)
@@ -245,7 +245,7 @@ def _given_groups(groups: Any, c: FloatArray) -> list[Any]:
 
 
 def _left_out_fit(
-    values: FloatArray, c: FloatArray, floor: float, solver: LearntSpectra
+    values: FloatArray, c: FloatArray, floor: float, solver: LearntModel
 ) -> tuple[FloatArray, FloatArray]:
     """Largest score and size of the residual of every standard, found without it."""
     scores, sizes = np.empty(c.shape[0]), np.empty(c.shape[0])
@@ -253,7 +253,7 @@ def _left_out_fit(
     for i in range(c.shape[0]):
         rest = np.arange(c.shape[0]) != i
         learnt = learn(values[rest], c[rest], floor)
-        one = LearntSpectra(learnt.pure, learnt.modes, floor, solver.errors, np.inf, 1.0, 0.95)
+        one = LearntModel(learnt.pure, learnt.modes, floor, solver.errors, np.inf, 1.0, 0.95)
         answer = one.analyse(values[i : i + 1], used)
         scores[i], sizes[i] = abs(answer.misfit_z[0]), answer.residual_excess[0]
     return scores, sizes
@@ -262,8 +262,8 @@ def _left_out_fit(
 def _judge(labels: list[str], out: Any, p: FloatArray, names: list[str]) -> tuple[str, str]:
     found = []
     if out.any():
-        found.append(f"Standard {listed(np.array(labels)[out])} does not agree with the others: it may be an outlier or "
-                     "have a wrong label.")  # fmt: skip
+        found.append(f"Standard {listed(np.array(labels)[out])} does not agree with the others: it may be an outlier "
+                     "or have a wrong label.")  # fmt: skip
     curved = [name for name, value in zip(names, p, strict=True) if value < _BENT]
     if curved:
         found.append(f"The errors of {listed(curved)} bend with the amount: the relation may not be a straight line.")

@@ -1,0 +1,121 @@
+"""What ``assemble`` asks of a way to solve, and the one with known pure spectra."""
+
+from typing import Any, Protocol
+
+import numpy as np
+
+from unmix.diagnose.saturation import saturated
+from unmix.kernels import BoolArray, FloatArray
+from unmix.kernels.linalg import polynomial_terms
+from unmix.solve.analysis import Progress
+from unmix.solve.answer import Answer, Settings
+from unmix.solve.passes import Light, solve
+
+
+class Solver(Protocol):
+    """A way to solve spectra for amounts per unit path.
+
+    Attributes
+    ----------
+    pure : ndarray, shape (components, channels)
+        Pure spectra per unit amount and path; NaN marks a channel that cannot be used.
+    free : ndarray, shape (channels, terms)
+        Baseline terms in the fit.
+    nonnegative : bool
+    noise : ndarray or None
+        Known standard deviation of a channel.
+    """
+
+    pure: FloatArray
+    free: FloatArray
+    nonnegative: bool
+    noise: FloatArray | None
+
+    def analyse(
+        self,
+        y: FloatArray,
+        used: BoolArray,
+        *,
+        pure_uncertainty: FloatArray | float = 0.0,
+        resolution: float = 1e-12,
+        detect_saturation: bool = False,
+        progress: Progress | None = None,
+    ) -> Answer:
+        """Solve spectra (rows of y) on the used channels."""
+        ...
+
+
+class KnownModel:
+    """Known pure spectra, baseline terms and what is known about the noise.
+
+    Parameters
+    ----------
+    pure : ndarray, shape (components, channels)
+    axis : ndarray, shape (channels,)
+        Positions, for the baseline.
+    baseline : int or None
+    nonnegative : bool
+    level : float
+    noise : array_like or None
+        Standard deviation of a channel, one or one a channel.
+    noise_model : str
+        One of :data:`unmix.solve.passes.NOISE_MODELS`.
+    """
+
+    def __init__(
+        self,
+        pure: FloatArray,
+        axis: FloatArray,
+        *,
+        baseline: int | None,
+        nonnegative: bool,
+        level: float,
+        noise: Any,
+        noise_model: str,
+    ) -> None:
+        self.pure = pure
+        self.free = polynomial_terms(np.asarray(axis, dtype=float), baseline)
+        self.nonnegative = nonnegative
+        self.level = level
+        self.noise: FloatArray | None = None if noise is None else np.asarray(noise, dtype=float)
+        self.noise_model = noise_model
+
+    def analyse(
+        self,
+        y: FloatArray,
+        used: BoolArray,
+        *,
+        pure_uncertainty: FloatArray | float = 0.0,
+        resolution: float = 1e-12,
+        detect_saturation: bool = False,
+        progress: Progress | None = None,
+    ) -> Answer:
+        """Solve spectra.
+
+        Parameters
+        ----------
+        y : ndarray, shape (spectra, channels)
+        used : ndarray of bool, shape (spectra, channels)
+            Channels that count.
+        pure_uncertainty : float or ndarray, shape (components,)
+            Relative standard uncertainty of the pure spectra.
+        resolution : float
+            Rounding of the numbers relative to the largest of a spectrum, below which nothing is a misfit.
+        detect_saturation : bool
+            Whether the spectra are absorbance, in which flat tops show saturation.
+        progress : callable, optional
+            Called with the number of spectra finished.
+
+        Returns
+        -------
+        Answer
+        """
+        counts = used & np.isfinite(y) & np.isfinite(self.pure).all(axis=0)
+        bent, plateau = np.zeros(y.shape, dtype=bool), np.full(y.shape[0], np.nan)
+        if detect_saturation:
+            bent, plateau = saturated(np.where(counts, y, np.nan))
+        settings = Settings(self.level, self.nonnegative, known_noise=self.noise is not None, resolution=resolution)
+        relative = np.broadcast_to(np.asarray(pure_uncertainty, dtype=float), (self.pure.shape[0],))
+        noise = 1.0 if self.noise is None else self.noise
+        return solve(y, counts, noise, self.pure.T, self.free, relative, settings,
+                     Light(self.noise_model, bent, plateau), progress)  # fmt: skip
