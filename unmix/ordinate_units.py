@@ -84,6 +84,10 @@ _TEXTS: dict[str, OrdinateUnit] = {
         OrdinateUnit("absorbance", factor=_NAPIERIAN),
     ),
     **dict.fromkeys(
+        ["mau", "milliabsorbance", "absorbance mau"],
+        OrdinateUnit("absorbance", factor=1e-3),
+    ),
+    **dict.fromkeys(
         ["log(1/r)", "log 1/r", "log10(1/r)", "log1/r", "-log(r)", "-log10(r)", "-log r", "absorbance log(1/r)",
          "apparent absorbance"],
         OrdinateUnit("absorbance", note="log(1/R) is taken as apparent absorbance"),
@@ -162,10 +166,15 @@ def ordinate_unit(text: str) -> OrdinateUnit:
 
 
 def _percent(key: str) -> OrdinateUnit | None:
-    base = _TEXTS.get(re.sub(r"[()\[\]]", "", key.replace("%", " ")).strip())
+    base = _TEXTS.get(re.sub(r"[()\[\]/,%]", " ", key).strip())
     if base is None or base.quantity not in ("transmittance", "reflectance") or base.form != _PLAIN:
         return None
     return OrdinateUnit(base.quantity, form=_PERCENT)
+
+
+#: what stands in brackets behind the name of a quantity and adds nothing to it
+_EMPTY = frozenset(["", "-", "1", "a.u.", "au", "a", "abs", "od", "fraction", "arb. units", "arb. u.", "counts",
+                    "t", "r", "0-1"])  # fmt: skip
 
 
 def _named(name: str, unit: str) -> OrdinateUnit | None:
@@ -173,24 +182,9 @@ def _named(name: str, unit: str) -> OrdinateUnit | None:
     base = _TEXTS.get(name)
     if base is None or base.quantity == "absorptivity":
         return None
-    empty = (
-        "",
-        "-",
-        "1",
-        "a.u.",
-        "au",
-        "a",
-        "abs",
-        "od",
-        "fraction",
-        "arb. units",
-        "arb. u.",
-        "counts",
-        "t",
-        "r",
-        "0-1",
-    )
-    return base if unit in empty else None
+    if base.quantity == "absorbance" and unit == "mau":
+        return _TEXTS[unit]
+    return base if unit in _EMPTY else None
 
 
 # Units of an absorptivity: text -> the unit as the result names it. Case tells molar (M) from metre (m).
@@ -198,7 +192,8 @@ _LENGTH = {"cm": "cm", "m": "m", "mm": "mm", "um": "um", "km": "km", "metre": "m
            "centimetre": "cm", "centimeter": "cm"}  # fmt: skip
 _AMOUNT = {"mol": "mol", "mmol": "mmol", "umol": "umol", "nmol": "nmol", "mole": "mol", "moles": "mol",
            "micromol": "umol", "micromole": "umol", "micromoles": "umol", "millimol": "mmol", "nanomol": "nmol",
-           "g": "g", "mg": "mg", "ug": "ug", "kg": "kg", "gram": "g", "ppm": "ppm", "ppb": "ppb", "fraction": "fraction"}  # fmt: skip
+           "g": "g", "mg": "mg", "ug": "ug", "kg": "kg", "gram": "g", "ppm": "ppm", "ppb": "ppb",
+           "fraction": "fraction"}  # fmt: skip
 _VOLUME = {"l": "L", "litre": "L", "liter": "L", "ml": "mL", "ul": "uL", "dl": "dL", "dm": "dm"}
 _MOLAR = {"M": "mol/L", "mM": "mmol/L", "uM": "umol/L", "nM": "nmol/L"}
 _UNIT = re.compile(r"\s*(?:(?P<word>[A-Za-z\u00b5\u03bc]+)|(?P<one>1(?=\s*/))|(?P<open>\()|(?P<close>\))|(?P<over>/)|"

@@ -108,10 +108,11 @@ def named_pairs(layout: Layout, first: int, options: Options, findings: Findings
 def named_rows(
     layout: Layout, beside: Sequence[Sequence[str]], dialect: Dialect, options: Options, findings: Findings
 ) -> Naming:
-    """Names and units where every row is a spectrum and the cells in front of it are facts about it."""
+    """Names and units where every row is a spectrum and the cells beside it are facts about it."""
     n = len(beside)
-    heads = [read_cell(text.strip()) for text in layout.headings[0][: layout.axis_start]]
-    columns = [[read_cell(row[j].strip()) for row in beside] for j in range(layout.axis_start)]
+    start, stop = layout.span
+    heads = [read_cell(text.strip()) for text in layout.headings[0][:start] + layout.headings[0][stop:]]
+    columns = [[read_cell(row[j].strip()) for row in beside] for j in range(len(heads))]
     names_at = next((j for j, head in enumerate(heads) if head.lower() in LABEL_WORDS), None)
     if names_at is None:
         texts = [j for j, column in enumerate(columns) if not all(map(dialect.is_number, column))]

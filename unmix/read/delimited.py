@@ -17,8 +17,8 @@ DELIMITERS: dict[str | None, str] = {"\t": "tab", ";": "semicolon", ",": "comma"
 MISSING = frozenset(["", "nan", "na", "n/a", "#n/a", "null", "none", "?", "-", "--", "---", "n.a.", "missing"])
 
 _NUMBER = {
-    ".": re.compile(r"\s*[-+]?(\d+\.?\d*|\.\d+)([eE][-+]?\d{1,4})?\s*"),
-    ",": re.compile(r"\s*[-+]?(\d+,?\d*|,\d+)([eE][-+]?\d{1,4})?\s*"),
+    ".": re.compile(r"\s*[-+]?([0-9]+\.?[0-9]*|\.[0-9]+)([eE][-+]?[0-9]{1,4})?\s*"),
+    ",": re.compile(r"\s*[-+]?([0-9]+,?[0-9]*|,[0-9]+)([eE][-+]?[0-9]{1,4})?\s*"),
 }
 _THOUSANDS = re.compile(r"\s*[-+]?\d{1,3}(?:([,. '\u00a0\u2009\u202f])\d{3})(?:\1\d{3})*(?:[.,]\d*)?\s*")
 _COMMENT = re.compile(r"\s*(#|//|!|%{2,})")
@@ -106,13 +106,12 @@ def comments(lines: Iterable[str]) -> list[str]:
 
 
 def is_data(cells: Sequence[str], dialect: Dialect) -> bool:
-    """Whether a row can be one of numbers: it ends in two or more, and they are half of its cells."""
-    run = 0
-    for cell in reversed(cells):
-        if not dialect.is_number(cell):
-            break
-        run += 1
-    return run >= 2 and 2 * run >= len(cells) and any(dialect.is_value(cell) for cell in cells)
+    """Whether a row can be one of numbers: two or more of them stand side by side, and they are half of its cells."""
+    run = longest = 0
+    for cell in cells:
+        run = run + 1 if dialect.is_number(cell) else 0
+        longest = max(longest, run)
+    return longest >= 2 and 2 * longest >= len(cells) and any(dialect.is_value(cell) for cell in cells)
 
 
 def sniff(lines: Sequence[tuple[int, str]], decimal: str | None, *, file: str) -> Dialect:

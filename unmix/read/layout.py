@@ -17,6 +17,8 @@ from unmix.read.headings import LABEL_WORDS, Metadata, axis_cell, axis_heading, 
 
 #: fewer positions than this in a heading line are no axis
 _SHORTEST_AXIS = 3
+#: where spectra are measured, in the contract's units; only decides which of two possible axes is one
+_PLAUSIBLE = {"wavelength": (100.0, 1e6), "wavenumber": (10.0, 1e5), "raman_shift": (-1e4, 1e4)}
 
 
 @dataclass
@@ -33,8 +35,8 @@ class Layout:
         Line of the first row of numbers.
     headings : list of list of str
         Rows between the metadata and the numbers, each ``width`` cells.
-    axis_start : int
-        For rows: the first column that belongs to the spectrum.
+    span : (int, int)
+        For rows: the columns that belong to the spectrum, the second no more.
     axis : list of float
         For rows: the positions.
     axis_text : str
@@ -47,7 +49,7 @@ class Layout:
     width: int
     first_line: int
     headings: list[list[str]] = field(default_factory=list)
-    axis_start: int = 0
+    span: tuple[int, int] = (0, 0)
     axis: list[float] = field(default_factory=list)
     axis_text: str = ""
     metadata: Metadata = field(default_factory=Metadata)
@@ -77,10 +79,13 @@ def find_layout(head: Sequence[Row], dialect: Dialect, options: Options, *, file
         raise ReadError("no rows of numbers were found", path=file,
                         accepted="a table has two or more columns of numbers")  # fmt: skip
     width = len(head[start][1])
+    _refuse_numbers_before(head[:start], head[start][0], width, dialect, file)
     metadata, headings = _before(head[:start], width)
     data = head[start:stop]
-    columns = _columns(data, headings, dialect)
-    rows = _rows(data, headings, dialect)
+    rows = _rows(data, headings, dialect, broken=False)
+    columns = _columns(data, headings, dialect, broken=rows is None)
+    if columns is None and rows is None:
+        rows = _rows(data, headings, dialect, broken=True)
     chosen = _choose(columns, rows, data, options, file)
     chosen.metadata = metadata
     return chosen
@@ -100,12 +105,24 @@ def _numbers(head: Sequence[Row], dialect: Dialect) -> tuple[int, int]:
     return best
 
 
+def _refuse_numbers_before(rows: Sequence[Row], start: int, width: int, dialect: Dialect, file: str) -> None:
+    """Rows of numbers that do not belong to the longest stretch of them must not be taken for headings."""
+    for i, (line, cells) in enumerate(rows):
+        if is_data(cells, dialect) and dialect.is_value(cells[0]):
+            if len(cells) != width:
+                raise ReadError(f"the row has {len(cells)} cells but the rows from line {start} on have {width}",
+                                path=file, line=line,
+                                accepted="every row of numbers has the same number of cells")  # fmt: skip
+            after = next((number for number, later in rows[i + 1 :] if not is_data(later, dialect)), start)
+            raise ReadError("text stands between rows of numbers", path=file, line=after)
+
+
 def _before(rows: Sequence[Row], width: int) -> tuple[Metadata, list[list[str]]]:
     """Metadata and heading rows from what stands before the numbers; headings touch the numbers."""
     headings: list[list[str]] = []
     for _, cells in reversed(rows):
         fitted = _fitted(cells, width)
-        if fitted is None or (width > 2 and not any(fitted[2:])):
+        if fitted is None or (width > 2 and not any(fitted[2:]) and not axis_heading(fitted[0])):
             break
         headings.insert(0, fitted)
     if width == 2:
@@ -138,12 +155,16 @@ def _fitted(cells: list[str], width: int) -> list[str] | None:
     return None
 
 
-def _columns(data: Sequence[Row], headings: list[list[str]], dialect: Dialect) -> Layout | None:
-    """The layout with the axis in the first column, if that is possible."""
-    body = len(data)
-    while body and dialect.is_value(data[body - 1][1][0]):
-        body -= 1
-    if body == len(data):
+def _columns(data: Sequence[Row], headings: list[list[str]], dialect: Dialect, *, broken: bool) -> Layout | None:
+    """The layout with the axis in the first column, if that is possible.
+
+    ``broken`` allows cells of that column to hold no number, which is an error with a line when they are read.
+    """
+    numeric = [dialect.is_value(cells[0]) for _, cells in data]
+    if not any(numeric):
+        return None
+    body = numeric.index(True)
+    if not (broken or all(numeric[body:])):
         return None
     above = [cells for _, cells in data[:body]]
     width = len(data[0][1])
@@ -157,30 +178,40 @@ def _columns(data: Sequence[Row], headings: list[list[str]], dialect: Dialect) -
     return layout
 
 
-def _rows(data: Sequence[Row], headings: list[list[str]], dialect: Dialect) -> Layout | None:
-    """The layout with the axis in a heading row, if that is possible."""
-    above = [(data[0][0], row) for row in headings[-1:]]
-    for i, (_, cells) in enumerate([*above, data[0]]):
-        body = data if i < len(above) else data[1:]
+def _rows(data: Sequence[Row], headings: list[list[str]], dialect: Dialect, *, broken: bool) -> Layout | None:
+    """The layout with the axis in a heading row, if that is possible.
+
+    ``broken`` allows an axis that does not run one way, which is an error with its place when it is used.
+    """
+    candidates = [(row, data) for row in headings[-1:]]
+    if not headings or not dialect.is_value(data[0][1][0]):
+        candidates.append((data[0][1], data[1:]))
+    for cells, body in candidates:
         found = [axis_cell(cell, dialect.decimal) for cell in cells]
-        start = len(found)
-        while start and found[start - 1] is not None:
-            start -= 1
-        run = [cell for cell in found[start:] if cell is not None]
-        # A number in front of the axis belongs to the columns of facts beside the spectra
-        while len(run) > _SHORTEST_AXIS and not _runs_one_way([position for position, _ in run]):
-            run, start = run[1:], start + 1
-        positions = [position for position, _ in run]
-        units = {unit for _, unit in run}
-        if len(run) < _SHORTEST_AXIS or len(units) > 1 or not _runs_one_way(positions) or not body:
+        start, stop = _longest([cell is not None for cell in found])
+        run = [cell for cell in found[start:stop] if cell is not None]
+        positions, units = [position for position, _ in run], {unit for _, unit in run}
+        if len(run) < _SHORTEST_AXIS or len(units) > 1 or _counts(positions) or not body:
             continue
-        if _counts(positions) or (start and dialect.is_value(cells[0]) and i == len(above)):
+        if not (broken or _runs_one_way(positions)):
             continue
-        if not all(dialect.is_number(cell) for _, row in body for cell in row[start:]):
+        if not all(dialect.is_number(cell) for _, row in body for cell in row[start:stop]):
             continue
         text = units.pop() or next((cell for cell in cells[:start] if axis_heading(cell)), "")
-        return Layout("rows", len(cells), body[0][0], [cells], start, positions, text)
+        return Layout("rows", len(cells), body[0][0], [cells], (start, stop), positions, text)
     return None
+
+
+def _longest(flags: Sequence[bool]) -> tuple[int, int]:
+    """Start and end of the longest run of true flags."""
+    best = (0, 0)
+    start = 0
+    for i, flag in enumerate(flags):
+        if not flag:
+            start = i + 1
+        elif i + 1 - start > best[1] - best[0]:
+            best = (start, i + 1)
+    return best
 
 
 def _runs_one_way(positions: Sequence[float]) -> bool:
@@ -193,52 +224,54 @@ def _counts(positions: Sequence[float]) -> bool:
     return positions[0] in (0, 1) and all(b - a == 1 for a, b in pairwise(positions))
 
 
+_AN_AXIS = "an axis is a list of numbers in rising or falling order"
+_ORIENTATIONS = "give orientation='columns' (one spectrum a column) or orientation='rows' (one a row)"
+
+
 def _choose(columns: Layout | None, rows: Layout | None, data: Sequence[Row], options: Options, file: str) -> Layout:
-    accepted = "give orientation='columns' (one spectrum a column) or orientation='rows' (one a row)"
+    """The layout that the caller asks for, the only one, or the one for which the evidence speaks."""
     if options.orientation is not None:
         wanted = columns if options.orientation == "columns" else rows
         if wanted is None:
             where = "first column" if options.orientation == "columns" else "heading line"
-            raise ReadError(f"no axis was found in the {where}", path=file, line=data[0][0],
-                            accepted="an axis is a list of numbers in rising or falling order")  # fmt: skip
+            raise ReadError(f"no axis was found in the {where}", path=file, line=data[0][0], accepted=_AN_AXIS)
         return wanted
-    if columns is not None and not columns.axis_text and _counts_down(data, columns):
+    first = _first(data, columns) if columns is not None else []
+    if columns is not None and not columns.axis_text and len(first) > 1 and _counts(first):
         if rows is not None:
             return rows
         raise ReadError("the first column only counts the rows and no line of headings is an axis", path=file,
-                        line=columns.first_line, accepted=accepted)  # fmt: skip
-    if columns is None and rows is None:
+                        line=columns.first_line, accepted=_ORIENTATIONS)  # fmt: skip
+    if columns is not None and rows is not None:
+        return _likelier(columns, rows, first, options, file)
+    nameless = columns is not None and bool(columns.headings) and not columns.axis_text
+    found = rows or columns
+    if found is None or (nameless and not _runs_one_way(first)):
         raise ReadError("neither the first column nor a line of headings is an axis", path=file, line=data[0][0],
-                        accepted="an axis is a list of numbers in rising or falling order")  # fmt: skip
-    if rows is None or columns is None:
-        found = rows or columns
-        assert found is not None
-        if found is columns and found.headings and not found.axis_text and not _runs_one_way(_first(data, found)):
-            raise ReadError("neither the first column nor a line of headings is an axis", path=file,
-                            line=found.first_line,
-                            accepted="an axis is a list of numbers in rising or falling order")  # fmt: skip
-        return found
-    first = _first(data, columns)
-    if rows.axis_text and not columns.axis_text:
+                        accepted=_AN_AXIS)  # fmt: skip
+    return found
+
+
+def _likelier(columns: Layout, rows: Layout, first: list[float], options: Options, file: str) -> Layout:
+    """One of two possible layouts, where there is evidence for it: named units, shape, or a range that is possible."""
+    if not columns.axis_text and (rows.axis_text or not _runs_one_way(first)):
         return rows
-    if not _runs_one_way(first) and not columns.axis_text:
-        return rows
-    if columns.axis_text and _runs_one_way(first) and not _counts(first):
-        return columns
-    if len(first) <= 2 and len(rows.axis) >= 10 and rows.axis_start <= 1:
-        return rows
+    if len(first) <= 2 and len(rows.axis) >= 10:
+        return rows  # hardly a spectrum of two channels
+    unit = axis_heading(options.unit or columns.axis_text or rows.axis_text)
+    if unit is not None and _runs_one_way(first):
+        low, high = _PLAUSIBLE[unit.dim]
+        possible = [all(low <= unit.factor * position <= high for position in axis) for axis in (first, rows.axis)]
+        if possible[0] != possible[1]:
+            return columns if possible[0] else rows
     raise ReadError("both the first column and a line of headings could be the axis", path=file,
-                    line=rows.first_line, accepted=accepted)  # fmt: skip
-
-
-def _counts_down(data: Sequence[Row], columns: Layout) -> bool:
-    first = _first(data, columns)
-    return len(first) > 1 and _counts(first)
+                    line=rows.first_line, accepted=_ORIENTATIONS)  # fmt: skip
 
 
 def _first(data: Sequence[Row], columns: Layout) -> list[float]:
     """The numbers in the first column of the rows seen so far."""
-    return [float(cells[0].replace(",", ".")) for line, cells in data if line >= columns.first_line]
+    cells = [cells[0].replace(",", ".") for line, cells in data if line >= columns.first_line]
+    return [float(cell) for cell in cells if _is_float(cell)]
 
 
 def label_row(headings: Sequence[Sequence[str]]) -> int | None:

@@ -165,12 +165,12 @@ class _Body:
         """The numbers of the spectra, shape (rows, channels), and the cells beside them."""
         numbers = array("d")
         beside: list[list[str]] = []
-        start, file = self.layout.axis_start, self.findings.file
+        (start, stop), file = self.layout.span, self.findings.file
         for line, cells in self._data(rows):
-            numbers.extend(self.dialect.numbers(cells[start:], file=file, line=line, first=start + 1))
-            beside.append(cells[:start])
+            numbers.extend(self.dialect.numbers(cells[start:stop], file=file, line=line, first=start + 1))
+            beside.append(cells[:start] + cells[stop:])
             self.lines.append(line)
-        return np.frombuffer(numbers, dtype=np.float64).reshape(-1, self.layout.width - start), beside
+        return np.frombuffer(numbers, dtype=np.float64).reshape(-1, stop - start), beside
 
 
 def _require_axis(axis: FloatArray, lines: list[int], findings: Findings, *, column: int) -> None:
@@ -190,7 +190,10 @@ def _found(
     axis: FloatArray, values: FloatArray, naming: Naming, layout: Layout, options: Options, findings: Findings,
     facts: dict[str, Any],
 ) -> Found:  # fmt: skip
-    unit = axis_of(layout.axis_text or layout.metadata.axis, options, findings, line=layout.first_line)
+    written = layout.axis_text or layout.metadata.axis
+    if not written and layout.orientation == "columns" and layout.headings:
+        written = layout.headings[-1][0]  # not understood, but worth quoting
+    unit = axis_of(written, options, findings, line=layout.first_line)
     points, values, direction = increasing(unit.convert(axis), values, findings)
     values, notes = naming.settled(values)
     findings.notes += notes
@@ -200,7 +203,7 @@ def _found(
         **facts,
         "layout": f"{where}, numbers from line {layout.first_line}",
         "direction": direction,
-        "axis_unit_written": layout.axis_text or layout.metadata.axis,
+        "axis_unit_written": written,
         "ordinate_unit_written": naming.written,
     }
     return Found(points, values, unit.dim, naming.quantity, naming.labels, findings.file, naming.per, naming.coords,
