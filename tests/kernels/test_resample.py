@@ -18,9 +18,7 @@ def test_exact_for_polynomials_to_degree_five_on_an_uneven_axis(uneven):
     for degree in range(STENCIL):
         coefficients = np.random.default_rng(degree).normal(size=degree + 1)
         centred = lambda x, c=coefficients: np.polynomial.polynomial.polyval((x - 40.0) / 40.0, c)  # noqa: E731
-        np.testing.assert_allclose(
-            interpolate(uneven, centred(uneven), targets), centred(targets), atol=1e-12
-        )
+        np.testing.assert_allclose(interpolate(uneven, centred(uneven), targets), centred(targets), atol=1e-12)
     quartic_six = (targets / 40.0) ** 6
     assert np.abs(interpolate(uneven, (uneven / 40.0) ** 6, targets) - quartic_six).max() > 1e-10
 
@@ -93,9 +91,7 @@ def test_a_change_of_spacing_and_a_single_lost_channel_are_not_holes():
 
 def test_short_axes():
     assert interpolate(np.array([5.0]), np.array([2.0]), np.array([5.0, 6.0])).tolist()[0] == 2.0
-    np.testing.assert_allclose(
-        interpolate(np.array([1.0, 3.0]), np.array([1.0, 5.0]), np.array([2.0])), [3.0]
-    )
+    np.testing.assert_allclose(interpolate(np.array([1.0, 3.0]), np.array([1.0, 5.0]), np.array([2.0])), [3.0])
 
 
 def test_positions_that_differ_by_rounding_are_the_same_channel():

@@ -61,9 +61,7 @@ def test_wavelength_and_wavenumber_are_converted_exactly(own_dim):
     wavenumber = np.arange(800.0, 1200.0, 2.0)
     wavelength = 1e7 / wavenumber
     if own_dim == "wavenumber":
-        spectra, pure, notes = common_axis(
-            samples_on(wavenumber), pure_on(wavelength, bands(wavenumber), "wavelength")
-        )
+        spectra, pure, notes = common_axis(samples_on(wavenumber), pure_on(wavelength, bands(wavenumber), "wavelength"))
     else:
         spectra, pure, notes = common_axis(samples_on(wavelength, "wavelength"), pure_on(wavenumber))
     assert pure.dims == ("component", own_dim)

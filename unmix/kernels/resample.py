@@ -13,6 +13,8 @@ measurement, where a cubic through four channels leaves 2.2 (h/w)^4, 2e-4 and 1.
 import numpy as np
 
 from unmix.kernels import BoolArray, FloatArray, IntArray
+from unmix.kernels.missing import patterns
+from unmix.kernels.stencil import weighted_sums
 
 #: channels that take part in one interpolated value
 STENCIL = 6
@@ -128,30 +130,58 @@ def interpolate(axis: FloatArray, values: FloatArray, targets: FloatArray) -> Fl
     left, right = locate(axis, targets)
     gap = np.append(holes(axis), False)
     reachable = (left >= 0) & ((left == right) | ~gap[left])
-    for members, pattern in _patterns(np.isfinite(rows)):
+    for members, pattern in patterns(np.isfinite(rows)):
         here = reachable & pattern[left] & pattern[right]
         on, between = here & (left == right), here & (left != right)
         block = np.full((members.size, targets.size), np.nan, dtype=values.dtype)
         block[:, on] = rows[np.ix_(members, left[on])]
         if between.any():
-            block[:, between] = _weighted(axis[pattern], rows[members][:, pattern], targets[between])
+            block[:, between] = weighted_sums(
+                rows[members][:, pattern], *stencil_weights(axis[pattern], targets[between])
+            )
         answer[members] = block
     return answer.reshape(*values.shape[:-1], targets.size)
 
 
-def _patterns(present: BoolArray) -> list[tuple[IntArray, BoolArray]]:
-    """Rows that share one pattern of present channels, and the pattern."""
-    if present.all():
-        return [(np.arange(present.shape[0]), np.ones(present.shape[1], dtype=np.bool_))]
-    patterns, which = np.unique(present, axis=0, return_inverse=True)
-    return [(np.flatnonzero(which.ravel() == i), pattern) for i, pattern in enumerate(patterns)]
+def broadening_weights(
+    axis: FloatArray, targets: FloatArray, width: float, shape: str
+) -> tuple[BoolArray, IntArray, FloatArray]:
+    """Weights that convolve with a line shape and read off the result at targets.
 
+    Parameters
+    ----------
+    axis : ndarray, shape (channels,)
+        Strictly increasing; spacing need not be even.
+    targets : ndarray, shape (targets,)
+    width : float
+        Full width at half height, at least the channel spacing.
+    shape : {'gaussian', 'triangle'}
 
-def _weighted(axis: FloatArray, rows: FloatArray, targets: FloatArray) -> FloatArray:
-    """Weighted sums of the channels of each stencil."""
-    first, weights = stencil_weights(axis, targets)
-    weights = weights.astype(rows.dtype)
-    total: FloatArray = rows[:, first] * weights[:, 0]
-    for j in range(1, weights.shape[1]):
-        total += rows[:, first + j] * weights[:, j]
-    return total
+    Returns
+    -------
+    reached : ndarray of bool, shape (targets,)
+        Targets whose line shape lies inside the axis and over no hole; the rest describes these alone.
+    first : ndarray of int, shape (reached,)
+    weights : ndarray, shape (reached, stencil)
+        For ``stencil.weighted_sums``; each row adds up to 1. The integral is taken by the trapezoidal rule, and
+        the line shape ends at 1.5 widths (Gaussian, 4e-4 of its area cut) or 1 width (triangle).
+    """
+    reach = (1.5 if shape == "gaussian" else 1.0) * width
+    reached = (targets >= axis[0] + reach * (1 - SAME)) & (targets <= axis[-1] - reach * (1 - SAME))
+    for hole in np.flatnonzero(holes(axis)):
+        reached &= (targets <= axis[hole] - reach) | (targets >= axis[hole + 1] + reach)
+    inside = targets[reached]
+    first = np.searchsorted(axis, inside - reach * (1 + SAME))
+    last = np.searchsorted(axis, inside + reach * (1 + SAME), side="right")
+    stencil = int((last - first).max(initial=1))
+    columns = first[:, None] + np.arange(stencil)
+    beyond = columns >= last[:, None]
+    columns = np.minimum(columns, axis.size - 1)
+    distance = (axis[columns] - inside[:, None]) / width
+    profile = np.exp2(-4.0 * distance**2) if shape == "gaussian" else np.maximum(1.0 - np.abs(distance), 0.0)
+    weights = np.where(beyond, 0.0, profile * np.gradient(axis)[columns])
+    weights /= weights.sum(axis=1, keepdims=True)
+    shift = np.maximum(first + stencil - axis.size, 0)
+    for row in np.flatnonzero(shift):
+        weights[row] = np.roll(weights[row], shift[row])
+    return reached, first - shift, weights
