@@ -128,15 +128,36 @@ def like_groups(c: FloatArray) -> list[IntArray]:
     return groups
 
 
-def choose_floor(a: FloatArray, c: FloatArray, noise: float, groups: list[IntArray]) -> tuple[float, FloatArray]:
+def in_own_space(a: FloatArray) -> FloatArray:
+    """Spectra as coordinates in the space that they span, where learning gives the same amounts at less cost.
+
+    Pure spectra, modes and left-out spectra all lie in that space, and distances are kept.
+
+    Parameters
+    ----------
+    a : ndarray, shape (spectra, channels)
+
+    Returns
+    -------
+    ndarray, shape (spectra, min(spectra, channels))
+    """
+    u, s, _ = np.linalg.svd(a, full_matrices=False)
+    return u * s
+
+
+def choose_floor(
+    a: FloatArray, c: FloatArray, noise: float, n_channels: int, groups: list[IntArray]
+) -> tuple[float, FloatArray]:
     """The floor with the least error when groups of like composition are left out.
 
     Parameters
     ----------
     a, c : ndarray
-        As for :func:`learn`.
+        As for :func:`learn`, or in their own space.
     noise : float
         Noise of a channel within one spectrum, the smallest floor tried; each next one is twice as large.
+    n_channels : int
+        Before the spectra were put in their own space.
     groups : list of ndarray of int
 
     Returns
@@ -147,7 +168,7 @@ def choose_floor(a: FloatArray, c: FloatArray, noise: float, groups: list[IntArr
     """
     k = c.shape[1]
     pure = np.linalg.lstsq(c, a, rcond=None)[0]
-    spread = float(np.sqrt(np.sum((a - c @ pure) ** 2) / max(a.size - k * a.shape[1], 1)))
+    spread = float(np.sqrt(np.sum((a - c @ pure) ** 2) / max((a.shape[0] - k) * n_channels, 1)))
     tries = noise * 2.0 ** np.arange(max(int(np.ceil(np.log2(max(8.0 * spread / noise, 2.0)))), 1) + 1)
     best = (np.inf, tries[0], np.empty_like(c, dtype=float))
     for floor in tries:

@@ -99,11 +99,11 @@ class LearntModel:
             bent, plateau = saturated(np.where(used, y, np.nan))
         answer.stray_light[:] = np.nan_to_num(10.0**-plateau)
         answer.residual_growth[:] = 1.0
-        complete: BoolArray = np.isfinite(self.pure).all(axis=0)
+        complete: BoolArray = np.atleast_1d(np.isfinite(self.pure).all(axis=0))
         reference = self._reach(learnt, complete)
         done = 0
         for rows, weight in patterns((used & ~bent & complete).astype(float)):
-            pattern = np.asarray(weight, dtype=bool)
+            pattern: BoolArray = weight.astype(bool)
             if pattern.sum() > self.pure.shape[0]:
                 widening = self._reach(learnt, pattern) / reference
                 for start in range(0, rows.size, CHUNK):

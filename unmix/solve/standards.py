@@ -11,7 +11,7 @@ from unmix.diagnose.standards import bent, error_model, outlying, upper_limit
 from unmix.errors import InputError, listed, suggestion
 from unmix.kernels import FloatArray
 from unmix.kernels.noise import local_noise
-from unmix.kernels.variation import choose_floor, learn, leave_out, like_groups
+from unmix.kernels.variation import choose_floor, in_own_space, learn, leave_out, like_groups
 from unmix.prepare.axis import select_regions
 from unmix.provenance import provenance
 from unmix.solve.learnt import LearntModel
@@ -93,9 +93,10 @@ def learn_pure(
     _check(values, c, samples, names)
     by = like_groups(c) if groups is None else _given_groups(groups, c)
     noise = local_noise(values)
-    floor, grouped = choose_floor(values, c, noise, by)
+    short = in_own_space(values)
+    floor, grouped = choose_floor(short, c, noise, values.shape[1], by)
     singles = [np.array([i]) for i in range(c.shape[0])]
-    alone = leave_out(values, c, floor, singles)
+    alone = leave_out(short, c, floor, singles)
     model = error_model([alone, grouped], c)
     learnt = learn(values, c, floor)
     solver = LearntModel(learnt.pure, learnt.modes, floor, model, np.inf, 1.0, 0.95)
