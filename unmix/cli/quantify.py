@@ -1,5 +1,6 @@
 """The command ``quantify``: samples and pure spectra from files, amounts with verdicts out."""
 
+from pathlib import Path
 from typing import Annotated, Any
 
 import typer
@@ -11,12 +12,26 @@ EXAMPLE = """
 Example:
   unmix quantify drums/*.jdx --pure pure/ --baseline 1 --report drums.html
   unmix quantify run.csv --pure pure/ --regions 1650-1800 --path-length "25 um"
+  unmix quantify run.csv --standards standards/ --amounts amounts.csv --report run.html
 """
 
 
 def command(
     samples: options.Sources,
-    pure: options.Pure,
+    pure: Annotated[
+        list[str] | None,
+        typer.Option("--pure", metavar="PATH", help="Pure spectra: folder, file or pattern; may be repeated."),
+    ] = None,
+    standards: Annotated[
+        list[str] | None,
+        typer.Option(
+            "--standards", metavar="PATH", help="Spectra of known amounts, from which to learn; with --amounts."
+        ),
+    ] = None,
+    amounts: Annotated[
+        Path | None,
+        typer.Option("--amounts", metavar="TABLE", help="Amounts of the standards: names first, a column a component."),
+    ] = None,
     baseline: options.Baseline = "1",
     regions: options.Regions = None,
     level: options.Level = 0.95,
@@ -57,10 +72,11 @@ def command(
             "noise": noise,
             "nonnegative": not no_nonnegative,
         }
-        from unmix.cli.samples import quantify_files, read_pure  # noqa: PLC0415 - heavy
+        from unmix.cli.samples import known_spectra, quantify_files  # noqa: PLC0415 - heavy
         from unmix.cli.show import print_amounts, print_reasons, print_refused, remarks_of  # noqa: PLC0415 - heavy
 
-        known = read_pure(pure, unit=pure_unit, quantity=pure_quantity, per=per)
+        given = {"unit": pure_unit, "quantity": pure_quantity, "per": per}
+        known = known_spectra(pure, standards, amounts, settings, given)
         run = quantify_files(samples, known, settings, unit=unit, quantity=quantity)
         shown.update(remarks_of(run.results))
         if not (quiet or files.stream):

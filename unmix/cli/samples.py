@@ -15,6 +15,7 @@ import unmix
 from unmix.cli.terminal import Tick, progress
 from unmix.errors import NAMED, InputError, UnmixError
 from unmix.read import read_each
+from unmix.read.amounts import read_amounts
 from unmix.solve.options import check_baseline, check_level, check_noise
 from unmix.spectra import as_pure, spectral_dim
 from unmix.units import length_in_cm
@@ -52,9 +53,39 @@ def read_pure(
     return as_pure(read)
 
 
+def known_spectra(
+    pure: Sequence[str] | None,
+    standards: Sequence[str] | None,
+    amounts: Path | None,
+    settings: dict[str, Any],
+    given: dict[str, str | None],
+) -> xr.DataArray | xr.Dataset:
+    """Pure spectra from files, or learnt from standards with a table of amounts.
+
+    Regions belong to what is learnt, so they are taken out of the settings then.
+
+    Raises
+    ------
+    UnmixError
+        When neither or both are given, or a file cannot be used.
+    """
+    if bool(pure) == bool(standards) or bool(standards) != bool(amounts):
+        raise InputError("the pure spectra are not clear",
+                         accepted="give --pure, or --standards together with --amounts")  # fmt: skip
+    if pure:
+        return read_pure(pure, **given)
+    source: Any = list(standards or [])
+    read = unmix.read(source[0] if len(source) == 1 else source, unit=given["unit"], quantity=given["quantity"])
+    for file, reason in json.loads(read.attrs.get("refused", "{}")).items():
+        raise InputError(f"a standard could not be read: {reason}", where=str(file))
+    table = read_amounts(Path(str(amounts)))
+    learnt: xr.Dataset = unmix.learn_pure(read, table, unit=given["per"], regions=settings.pop("regions", None))
+    return learnt
+
+
 def quantify_files(
     sources: Sequence[str],
-    pure: xr.DataArray,
+    pure: xr.DataArray | xr.Dataset,
     settings: dict[str, Any],
     *,
     unit: str | None = None,
@@ -109,14 +140,14 @@ def _all_refused(refused: Mapping[str, str]) -> str:
 
 
 def _quantify(
-    together: xr.DataArray, pure: xr.DataArray, settings: dict[str, Any], tick: Tick, done: int, total: int
+    together: xr.DataArray, pure: xr.DataArray | xr.Dataset, settings: dict[str, Any], tick: Tick, done: int, total: int
 ) -> xr.Dataset:
     result: xr.Dataset = unmix.quantify(together, pure, progress=lambda n: tick(done + n, total), **settings)
     return result
 
 
 def _one_by_one(
-    group: Sequence[xr.DataArray], pure: xr.DataArray, settings: dict[str, Any], refused: dict[str, str]
+    group: Sequence[xr.DataArray], pure: xr.DataArray | xr.Dataset, settings: dict[str, Any], refused: dict[str, str]
 ) -> list[xr.Dataset]:
     """Answer what can be answered of a group that failed as a whole, and note why the others cannot."""
     answered: list[xr.DataArray] = []
