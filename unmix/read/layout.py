@@ -128,11 +128,23 @@ def _before(rows: Sequence[Row], width: int) -> tuple[Metadata, list[list[str]]]
     if width == 2:
         # Two cells may as well be a word of the file and its value; only a line of names makes headings of them
         named = [i for i, row in enumerate(headings) if row[0].lower() in LABEL_WORDS]
-        headings = headings[named[0] if named else -1 :]
+        split = len(headings) > 1 and _merged(*headings[-2:]) is not None
+        headings = headings[named[0] if named else -2 if split else -1 :]
     metadata = Metadata()
     for _, cells in rows[: len(rows) - len(headings)]:
         take_line(metadata, " ".join(cell.strip() for cell in cells if cell.strip()), list(cells))
-    return metadata, headings
+    merged = _merged(*headings[-2:]) if len(headings) > 1 else None
+    return metadata, headings if merged is None else [*headings[:-2], merged]
+
+
+def _merged(names: list[str], units: list[str]) -> list[str] | None:
+    """Two rows of headings as one, where the first names quantities and the second their units; None otherwise."""
+    if axis_heading(names[0]) or not axis_heading(units[0]):
+        return None
+    merged = [f"{name} ({unit})" if unit else name for name, unit in zip(names, units, strict=True)]
+    quantities = [ordinate_heading(text) for text in merged[1:]]
+    whole = axis_heading(merged[0]) and all(unit is not None and not name for name, unit in quantities)
+    return merged if whole else None
 
 
 def _fitted(cells: list[str], width: int) -> list[str] | None:
