@@ -10,7 +10,6 @@ Lawson and Hanson, Solving Least Squares Problems (1974), chapter 23. Bro and de
 """
 
 import numpy as np
-from scipy.linalg import solve_triangular
 from scipy.optimize import nnls as one_by_one
 
 from unmix.kernels import BoolArray, FloatArray, IntArray
@@ -18,6 +17,9 @@ from unmix.kernels.linalg import unit_columns
 
 #: gradient below this fraction of the data's length counts as zero
 _FLAT = 1e-14
+
+#: numbers of the data looked at in one go, half a megabyte
+_CACHED = 2**16
 
 #: a triangle with a diagonal ratio below this starts from the empty passive set
 _NEARLY_SINGULAR = 1e-12
@@ -47,7 +49,16 @@ def nnls(A: FloatArray, Y: FloatArray) -> FloatArray:
     """
     scaled, length = unit_columns(np.asarray(A, dtype=np.float64))
     q, r = np.linalg.qr(scaled)
-    return nnls_reduced(r, np.asarray(Y) @ q) / length
+    return nnls_reduced(r, _product(np.asarray(Y), q)) / length
+
+
+def _product(y: FloatArray, q: FloatArray) -> FloatArray:
+    """Y Q in blocks that stay in the cache: matrix products with so few columns otherwise copy all of Y first."""
+    out = np.empty((y.shape[0], q.shape[1]))
+    block = max(1, _CACHED // max(y.shape[1], 1))
+    for start in range(0, y.shape[0], block):
+        out[start : start + block] = y[start : start + block] @ q
+    return out
 
 
 def nnls_reduced(r: FloatArray, z: FloatArray) -> FloatArray:
@@ -68,24 +79,23 @@ def nnls_reduced(r: FloatArray, z: FloatArray) -> FloatArray:
     x: FloatArray = np.zeros((n, k))
     if n == 0 or k == 0:
         return x
-    size = np.linalg.norm(z, axis=1)
-    # rows are solved at unit size so that one tolerance serves all
-    unit = z / np.where(size > 0, size, 1.0)[:, None]
+    # rows are solved at unit size so that one tolerance serves all; a row of zeros stays one
+    columns, size = unit_columns(z.T)
+    unit = columns.T
     diagonal = np.abs(np.diagonal(r))
     regular = r.shape[0] == k and diagonal.min(initial=1.0) > _NEARLY_SINGULAR * diagonal.max(initial=0.0)
     passive = np.zeros((n, k), dtype=bool)
     if regular:
-        x = solve_triangular(r, unit.T).T
+        x = _back_substitute(r, unit)
         passive = x > 0
         np.maximum(x, 0.0, out=x)
-    todo: IntArray = np.flatnonzero(~passive.all(axis=1) & (size > 0))
+    todo: IntArray = np.flatnonzero(~passive.all(axis=1) & unit.any(axis=1))
     stuck = _active_sets(r, unit, x, passive, todo)
     for row in stuck:
         try:
             x[row] = one_by_one(r, unit[row])[0]
         except RuntimeError:
             x[row] = np.nan
-    x[size == 0] = 0.0
     solved: FloatArray = x * size[:, None]
     return solved
 
@@ -160,12 +170,7 @@ def _inner(
 def _grouped(r: FloatArray, z: FloatArray, passive: BoolArray) -> FloatArray:
     """Least squares on each row's passive columns, all rows with the same set in one solution."""
     out = np.zeros((z.shape[0], r.shape[1]))
-    sets, which = np.unique(np.packbits(passive, axis=1), axis=0, return_inverse=True)
-    which = which.reshape(-1)
-    order = np.argsort(which, kind="stable")
-    edges = np.searchsorted(which[order], np.arange(sets.shape[0] + 1))
-    for g in range(sets.shape[0]):
-        rows = order[edges[g] : edges[g + 1]]
+    for rows in _alike(passive):
         columns = np.flatnonzero(passive[rows[0]])
         if columns.size:
             q, t = np.linalg.qr(r[:, columns])
@@ -173,5 +178,22 @@ def _grouped(r: FloatArray, z: FloatArray, passive: BoolArray) -> FloatArray:
             if t.shape[0] < t.shape[1] or pivot.min() < 1e-14 * pivot.max():
                 out[np.ix_(rows, columns)] = np.linalg.lstsq(r[:, columns], z[rows].T, rcond=None)[0].T
             else:
-                out[np.ix_(rows, columns)] = solve_triangular(t, (z[rows] @ q).T).T
+                out[np.ix_(rows, columns)] = _back_substitute(t, z[rows] @ q)
     return out
+
+
+def _alike(passive: BoolArray) -> list[IntArray]:
+    """Rows that share a passive set, set by set."""
+    if passive.shape[0] == 0:
+        return []
+    order = np.lexsort(np.packbits(passive, axis=1).T)
+    changes = (passive[order[1:]] != passive[order[:-1]]).any(axis=1)
+    return np.split(order, np.flatnonzero(changes) + 1)
+
+
+def _back_substitute(r: FloatArray, z: FloatArray) -> FloatArray:
+    """Solve R x = z for every row z; as accurate as the library's solver, which is slow for many small rows."""
+    x = np.empty((r.shape[1], z.shape[0]))
+    for i in range(r.shape[1] - 1, -1, -1):
+        x[i] = (z[:, i] - r[i, i + 1 :] @ x[i + 1 :]) / r[i, i]
+    return x.T
