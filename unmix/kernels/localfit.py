@@ -36,7 +36,7 @@ def polynomial_weights(axis: FloatArray, window: int, order: int, derivative: in
     """
     first = (np.arange(axis.size) - window // 2).clip(0, axis.size - window)
     offset = axis[first[:, None] + np.arange(window)] - axis[:, None]
-    reach = np.abs(offset).max(axis=1, keepdims=True)
+    reach = np.abs(offset).max(axis=1, keepdims=True) if window > 1 else np.ones((axis.size, 1))
     powers = (offset / reach)[..., None] ** np.arange(order + 1)
     q, r = np.linalg.qr(powers)
     pick = np.zeros((order + 1, 1))

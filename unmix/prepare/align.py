@@ -51,7 +51,7 @@ class Align(Step):
     lost_because = "every spectrum is moved by its own shift"
     instead = "correct the axis of the instrument once, by the same shift for all spectra"
     no_answer = "without a band to go by"
-    least_channels = 4
+    least_channels = 2
     accepts: ClassVar[Mapping[str, Rule]] = {
         "reference": spectrum().or_none("the mean of the spectra"),
         "max_shift": number(least=0).or_none("two channels"),

@@ -48,7 +48,7 @@ class _Shrinking(Step):
         differences = _differences(type(self).__name__, rows, y)
         _, singular, directions = np.linalg.svd(differences, full_matrices=False)
         known = singular > _ROUNDING * (singular[0] if singular.size else 0.0)
-        self._check_rank(int(known.sum()))
+        self._check_rank(int(known.sum()), differences.shape[0])
         variance = singular[known] ** 2 / max(differences.shape[0] - 1, 1)
         self.kept_part_ = self._kept_part(variance)
         self.basis_ = directions[known][: self.kept_part_.size]
@@ -57,10 +57,10 @@ class _Shrinking(Step):
     def _kept_part(self, variance: FloatArray | None) -> FloatArray:
         """How much of each direction is kept, from the variance along them or from the parameters."""
 
-    def _check_rank(self, rank: int) -> None:
+    def _check_rank(self, rank: int, count: int) -> None:
         if rank == 0:
-            raise InputError(f"{type(self).__name__}: the spectra of a sample do not differ, nothing can be learned",
-                             accepted="give spectra of the same samples under different conditions")  # fmt: skip
+            raise InputError(f"{type(self).__name__}: nothing can be learned from {count} sample spectra of which none "
+                             "differ", accepted="give the same samples under different conditions")  # fmt: skip
 
     def _apply(self, rows: FloatArray) -> FloatArray:
         answer = np.full_like(rows, np.nan)
@@ -115,8 +115,8 @@ class ExternalParameterOrthogonalisation(_Shrinking):
     def _learned(self) -> dict[str, Any]:
         return {"basis": self.basis_.tolist()}
 
-    def _check_rank(self, rank: int) -> None:
-        super()._check_rank(rank)
+    def _check_rank(self, rank: int, count: int) -> None:
+        super()._check_rank(rank, count)
         if rank < self.components:
             raise InputError(f"{type(self).__name__}: components is {self.components}, but the spectra of a sample "
                              f"differ in {rank} directions only", accepted=f"give {rank} or fewer")  # fmt: skip
@@ -232,7 +232,7 @@ class VapourRemoval(Step):
         if rank < self._vapour.shape[0]:
             raise InputError(f"VapourRemoval: of {self._vapour.shape[0]} vapours only {rank} can be told apart on "
                              f"{np.count_nonzero(used)} feature(s)",
-                             accepted="give spectra with sharp lines, of different vapours, or wider regions")  # fmt: skip
+                             accepted="give sharp lines, different vapours, or wider regions")  # fmt: skip
 
     def _apply(self, rows: FloatArray) -> FloatArray:
         answer = np.full_like(rows, np.nan)

@@ -19,7 +19,7 @@ from unmix.prepare.given import on_axis
 DEFAULT_CUTOFF = 1 / 6
 
 
-class PenalisedBaseline(Baseline):
+class _Penalised(Baseline):
     """What the penalised baselines share: one solver, one default penalty, weights and a cap."""
 
     _rule: ClassVar[str]
@@ -42,8 +42,8 @@ class PenalisedBaseline(Baseline):
     def _learn(self, rows: FloatArray, y: Any) -> None:
         del rows, y
         channels = self.axis_.size
-        if channels <= self.difference + 1:
-            raise InputError(f"{type(self).__name__} needs more than {self.difference + 1} channels for difference "
+        if channels <= self.difference:
+            raise InputError(f"{type(self).__name__} needs more than {self.difference} channels for difference "
                              f"{self.difference}, but there are {channels} feature(s)",
                              accepted="give longer spectra or a lower difference")  # fmt: skip
         default = penalty_of_cutoff(DEFAULT_CUTOFF * channels, self.difference)
@@ -67,7 +67,7 @@ class PenalisedBaseline(Baseline):
         return curves
 
 
-class AsymmetricLeastSquares(PenalisedBaseline):
+class AsymmetricLeastSquares(_Penalised):
     """Take away a smooth curve that gives little weight to channels above it.
 
     Missing channels have no weight and stay missing.
@@ -110,7 +110,7 @@ class AsymmetricLeastSquares(PenalisedBaseline):
 
     _rule = "asymmetric"
     accepts: ClassVar[Mapping[str, Rule]] = {
-        **PenalisedBaseline.accepts,
+        **_Penalised.accepts,
         "asymmetry": number(above=0, most=1),
     }
 
@@ -134,19 +134,23 @@ class AsymmetricLeastSquares(PenalisedBaseline):
         return self.asymmetry
 
 
-class AdaptiveReweighted(PenalisedBaseline):
+class AdaptiveReweighted(_Penalised):
     """Take away a smooth curve that ignores what lies above it and weighs what lies below ever more (airPLS).
 
     Missing channels have no weight and stay missing.
 
     Parameters
     ----------
-    penalty, difference, weights
+    penalty : float, optional
         As in ``AsymmetricLeastSquares``.
+    difference : int
+        Order of the penalised difference, 1 to 3.
     iterations : int
         Solutions at most.
     tolerance : float
         Settled when what lies below the curve adds up to less than this part of the spectrum.
+    weights : array_like or DataArray, shape (channels,), optional
+        A further weight for each channel.
 
     Attributes
     ----------
@@ -183,7 +187,7 @@ class AdaptiveReweighted(PenalisedBaseline):
         self.weights = weights
 
 
-class AsymmetricallyReweighted(PenalisedBaseline):
+class AsymmetricallyReweighted(_Penalised):
     """Take away a smooth curve through the noise of the baseline, its weights a logistic step (arPLS).
 
     The step is placed by mean and standard deviation of the residuals below the curve, so that the curve runs
@@ -191,12 +195,16 @@ class AsymmetricallyReweighted(PenalisedBaseline):
 
     Parameters
     ----------
-    penalty, difference, weights
+    penalty : float, optional
         As in ``AsymmetricLeastSquares``.
+    difference : int
+        Order of the penalised difference, 1 to 3.
     iterations : int
         Solutions at most.
     tolerance : float
         Settled when the weights change by less than this part of their length.
+    weights : array_like or DataArray, shape (channels,), optional
+        A further weight for each channel.
 
     Attributes
     ----------

@@ -216,8 +216,9 @@ class ExtendedScatterCorrection(Step):
         if self.interferents is not None:
             others.append(on_axis(self, self.interferents, "interferents").T)
         self._model = np.column_stack([self.reference_, *others])
-        length = np.linalg.norm(self._model, axis=0)
-        rank = np.linalg.matrix_rank(self._model / np.where(length > 0, length, 1.0))
+        self._length = np.linalg.norm(self._model, axis=0)
+        self._length[self._length == 0] = 1.0
+        rank = np.linalg.matrix_rank(self._model / self._length)
         if rank < self._model.shape[1]:
             raise InputError(f"ExtendedScatterCorrection: of {self._model.shape[1]} terms only {rank} can be told "
                              f"apart on {self.axis_.size} feature(s)",
@@ -226,10 +227,11 @@ class ExtendedScatterCorrection(Step):
     def _apply(self, rows: FloatArray) -> FloatArray:
         answer = np.full_like(rows, np.nan)
         for members, present in patterns(np.isfinite(rows)):
-            model = self._model[present]
+            model = self._model[present] / self._length
             if model.shape[0] < model.shape[1]:
                 continue
-            amounts = np.einsum("ij,kj->ki", np.linalg.pinv(model), rows[np.ix_(members, present)])
+            solve = np.linalg.pinv(model) / self._length[:, None]
+            amounts = np.einsum("ij,kj->ki", solve, rows[np.ix_(members, present)])
             rest = rows[members] - np.einsum("kj,ij->ki", amounts[:, 1:], self._model[:, 1:])
             factor = amounts[:, :1]
             size = _over(_size(rows[members]), np.abs(self.reference_).max())

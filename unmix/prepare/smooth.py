@@ -184,8 +184,8 @@ class WhittakerSmoother(Step):
 
     def _learn(self, rows: FloatArray, y: Any) -> None:
         del y
-        if self.axis_.size <= self.difference + 1:
-            raise InputError(f"WhittakerSmoother needs more than {self.difference + 1} channels for difference "
+        if self.axis_.size <= self.difference:
+            raise InputError(f"WhittakerSmoother needs more than {self.difference} channels for difference "
                              f"{self.difference}, but there are {self.axis_.size} feature(s)",
                              accepted="give longer spectra or a lower difference")  # fmt: skip
         self.penalty_ = self.penalty if self.penalty is not None else self._choose(rows)
@@ -197,7 +197,7 @@ class WhittakerSmoother(Step):
         members, present = max(groups, key=lambda group: group[0].size)
         seen: FloatArray = rows[members[:: max(1, members.size // _VOTERS)]]
         axis = self.axis_
-        if np.count_nonzero(present) <= self.difference + 1:
+        if np.count_nonzero(present) <= self.difference:
             raise InputError("WhittakerSmoother: most spectra miss too many channels to choose a penalty",
                              accepted="give penalty")  # fmt: skip
         v = present.astype(np.float64)
