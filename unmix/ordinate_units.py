@@ -172,19 +172,24 @@ def _percent(key: str) -> OrdinateUnit | None:
     return OrdinateUnit(base.quantity, form=_PERCENT)
 
 
+_ARBITRARY = ("", "-", "1", "a.u.", "au", "arb. units", "arb. u.")
 #: what stands in brackets behind the name of a quantity and adds nothing to it
-_EMPTY = frozenset(["", "-", "1", "a.u.", "au", "a", "abs", "od", "fraction", "arb. units", "arb. u.", "counts",
-                    "t", "r", "0-1"])  # fmt: skip
+_EMPTY = {
+    "absorbance": (*_ARBITRARY, "a", "abs", "od"),
+    "transmittance": ("", "-", "1", "fraction", "t", "0-1"),
+    "reflectance": ("", "-", "1", "fraction", "r", "0-1"),
+    "intensity": (*_ARBITRARY, "counts", "cps"),
+}
 
 
 def _named(name: str, unit: str) -> OrdinateUnit | None:
     """``Absorbance (a.u.)`` and the like: the name decides where the unit adds nothing."""
-    base = _TEXTS.get(name)
+    base = _TEXTS.get(name) if len(name) > 1 else None
     if base is None or base.quantity == "absorptivity":
         return None
     if base.quantity == "absorbance" and unit == "mau":
         return _TEXTS[unit]
-    return base if unit in _EMPTY else None
+    return base if unit in _EMPTY[base.quantity] else None
 
 
 # Units of an absorptivity: text -> the unit as the result names it. Case tells molar (M) from metre (m).

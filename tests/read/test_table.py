@@ -186,6 +186,8 @@ def test_one_letter_names_are_names_where_not_every_column_is_a_unit(tmp_path):
     (PLAIN.replace("0.2", "1_0"), {}, "line 3: '1_0' in column 2 is not a number"),
     (PLAIN.replace("0.2", "inf"), {}, "line 3: 'inf' in column 2 is not a number"),
     (PLAIN.replace("0.2", "\u0661"), {}, "line 3: '\u0661' in column 2 is not a number"),
+    (PLAIN.replace("400,0.1", "400"), {}, "line 2: the row has 1 cells but the rows from line 3 on have 2"),
+    (PLAIN.replace("0.1", "x"), {}, "line 2: 'x' in column 2 is not a number"),
     (PLAIN.replace("401,0.2", "401"), {}, "line 3: the row has 1 cells but the rows before it have 2"),
     (PLAIN.replace("401,0.2", "401,0.2,5"), {}, "line 3: the row has 3 cells"),
     (PLAIN.replace("401", ""), {}, "line 3: the axis has no number in column 1"),

@@ -80,7 +80,7 @@ def find_layout(head: Sequence[Row], dialect: Dialect, options: Options, *, file
                         accepted="a table has two or more columns of numbers")  # fmt: skip
     width = len(head[start][1])
     _refuse_numbers_before(head[:start], head[start][0], width, dialect, file)
-    metadata, headings = _before(head[:start], width)
+    metadata, headings = _before(head[:start], width, dialect, file)
     data = head[start:stop]
     rows = _rows(data, headings, dialect, broken=False)
     columns = _columns(data, headings, dialect, broken=rows is None)
@@ -108,7 +108,8 @@ def _numbers(head: Sequence[Row], dialect: Dialect) -> tuple[int, int]:
 def _refuse_numbers_before(rows: Sequence[Row], start: int, width: int, dialect: Dialect, file: str) -> None:
     """Rows of numbers that do not belong to the longest stretch of them must not be taken for headings."""
     for i, (line, cells) in enumerate(rows):
-        if is_data(cells, dialect) and dialect.is_value(cells[0]):
+        touching = i + 1 == len(rows) and all(map(dialect.is_value, cells))
+        if (is_data(cells, dialect) and dialect.is_value(cells[0])) or touching:
             if len(cells) != width:
                 raise ReadError(f"the row has {len(cells)} cells but the rows from line {start} on have {width}",
                                 path=file, line=line,
@@ -117,24 +118,39 @@ def _refuse_numbers_before(rows: Sequence[Row], start: int, width: int, dialect:
             raise ReadError("text stands between rows of numbers", path=file, line=after)
 
 
-def _before(rows: Sequence[Row], width: int) -> tuple[Metadata, list[list[str]]]:
+def _before(rows: Sequence[Row], width: int, dialect: Dialect, file: str) -> tuple[Metadata, list[list[str]]]:
     """Metadata and heading rows from what stands before the numbers; headings touch the numbers."""
     headings: list[list[str]] = []
-    for _, cells in reversed(rows):
+    for line, cells in reversed(rows):
+        if len(cells) == width and dialect.is_value(cells[0]):
+            dialect.numbers(cells, file=file, line=line)  # a row of numbers with one that is none: say which
         fitted = _fitted(cells, width)
-        if fitted is None or (width > 2 and not any(fitted[2:]) and not axis_heading(fitted[0])):
+        if fitted is None:
             break
         headings.insert(0, fitted)
-    if width == 2:
-        # Two cells may as well be a word of the file and its value; only a line of names makes headings of them
-        named = [i for i, row in enumerate(headings) if row[0].lower() in LABEL_WORDS]
-        split = len(headings) > 1 and _merged(*headings[-2:]) is not None
-        headings = headings[named[0] if named else -2 if split else -1 :]
+    headings = headings[_first_heading(headings, width) :]
     metadata = Metadata()
     for _, cells in rows[: len(rows) - len(headings)]:
         take_line(metadata, " ".join(cell.strip() for cell in cells if cell.strip()), list(cells))
     merged = _merged(*headings[-2:]) if len(headings) > 1 else None
     return metadata, headings if merged is None else [*headings[:-2], merged]
+
+
+def _first_heading(rows: list[list[str]], width: int) -> int:
+    """Where headings start: rows with two filled cells may as well be a word of the file and its value.
+
+    A row of names makes headings of all below it; without one, headings are the last row and the fuller ones above.
+    """
+    full = [width > 2 and any(row[2:]) for row in rows]
+    for i, row in enumerate(rows):
+        if row[0].lower() in LABEL_WORDS and (width == 2 or full[i]):
+            return i
+    start = len(rows) - 1 if rows and (full[-1] or axis_heading(rows[-1][0]) or width == 2) else len(rows)
+    if width == 2 and start > 0 and _merged(*rows[start - 1 :]) is not None:
+        return start - 1
+    while 0 < start < len(rows) and full[start - 1]:
+        start -= 1
+    return start
 
 
 def _merged(names: list[str], units: list[str]) -> list[str] | None:

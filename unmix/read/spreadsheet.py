@@ -131,7 +131,7 @@ def write_workbook(rows: Iterable[list[str | float]], path: Path) -> None:
                              accepted="write .csv or .nc")  # fmt: skip
         try:
             sheet.append([None if cell == "" else cell for cell in row])
-        except (ValueError, TypeError) as error:
+        except (ValueError, TypeError, openpyxl.utils.exceptions.IllegalCharacterError) as error:
             raise WriteError(
                 f"row {number} cannot stand in a workbook ({error})", accepted="write .csv or .nc"
             ) from None
