@@ -15,14 +15,15 @@ def pure_spectra(rng, n, axis=AXIS, sharp=1.0):
     """Pure spectra of 6 to 20 pseudo-Voigt bands, the strongest of height about 1."""
     spectra = np.zeros((n, axis.size))
     low, high = axis[0], axis[-1]
-    for row in spectra:
+    for i in range(n):
+        row = spectra[i]
         for _ in range(rng.integers(6, 21)):
             center = rng.uniform(low, low + 0.35 * (high - low)) if rng.random() < 0.7 else rng.uniform(low, high)
             width = sharp * rng.lognormal(np.log(0.006), 0.5) * (high - low)
             height = rng.lognormal(-1.5, 0.8)
             u = (axis - center) / width
-            row += height * (0.5 * np.exp(-4 * np.log(2) * u**2) + 0.5 / (1 + 4 * u**2))
-        row /= row.max()
+            row = row + height * (0.5 * np.exp(-4 * np.log(2) * u**2) + 0.5 / (1 + 4 * u**2))
+        spectra[i] = row / row.max()
     return spectra
 
 
@@ -62,6 +63,8 @@ class Case:
     pure: xr.DataArray
     truth: np.ndarray
     unlisted: np.ndarray | None = None
+    harm: np.ndarray | None = None  # how far the unlisted compound moves each amount
+    clean: xr.DataArray | None = None  # the samples without it
 
 
 def amounts(rng, n, k, present=0.7):
@@ -77,7 +80,7 @@ def labelled(values, axis=AXIS, quantity="absorbance"):
 
 def labelled_pure(values, axis=AXIS, **coords):
     pure = make_spectra(values, axis, dim="wavenumber", quantity="absorptivity", leading="component",
-                        labels=[f"component {i + 1}" for i in range(values.shape[0])], attrs={"per": "g/L"})  # fmt: skip
+                        labels=[f"component {i + 1}" for i in range(len(values))], attrs={"per": "g/L"})  # fmt: skip
     return pure.assign_coords({name: ("component", entry) for name, entry in coords.items()})
 
 
@@ -117,7 +120,10 @@ def with_unlisted(rng, n, k, *, level=1e-3, noise="white", baseline=1, share=0.5
     hidden = 10 ** rng.uniform(np.log10(level) - 0.5, 0, n) * there
     y = truth @ pure[:k] + hidden[:, None] * pure[k] + baseline_of(rng, n, baseline)
     y = y + level * noise_of(noise, rng, y.shape)
-    return Case(labelled(y), labelled_pure(pure[:k]), truth, hidden)
+    terms = np.vstack([pure[:k], np.polynomial.legendre.legvander(np.linspace(-1, 1, AXIS.size), baseline).T])
+    moved = np.linalg.lstsq(terms.T, pure[k], rcond=None)[0][:k]
+    clean = labelled(y - hidden[:, None] * pure[k])
+    return Case(labelled(y), labelled_pure(pure[:k]), truth, hidden, hidden[:, None] * moved, clean)
 
 
 def with_shift(rng, n, k, *, level=1e-3, most=2.0):

@@ -236,15 +236,16 @@ def _noise(evidence: Evidence) -> list[tuple[int, str]]:
                     "noise by, so there is no interval; give the noise level.")]  # fmt: skip
     if evidence.noise_given is not None and np.isfinite(evidence.noise_level):
         ratio = evidence.noise_level / evidence.noise_given
-        if ratio > 1.0 + 4.0 / np.sqrt(2.0 * max(evidence.freedom, 1.0)):
+        effective = evidence.freedom / max(evidence.correlation_length, 1.0)
+        if ratio > 1.0 + 4.0 / np.sqrt(2.0 * max(effective, 1.0)):
             return [(1, f"The residual is {ratio:.1f} times the noise that was given.")]
     return []
 
 
 def _good(evidence: Evidence) -> str:
     if np.isfinite(evidence.excess):
-        return (f"The residual is like that of a standard ({evidence.excess:.2g} of its limit), and no band is unexplained "
-                f"(largest |z| {abs(evidence.misfit_z):.1f}, limit {evidence.misfit_limit:.1f}).")  # fmt: skip
+        return (f"The residual is like that of a standard ({evidence.excess:.2g} of its limit), and no band is "
+                f"unexplained (largest |z| {abs(evidence.misfit_z):.1f}, limit {evidence.misfit_limit:.1f}).")  # fmt: skip
     noise = f"The fit leaves {evidence.noise_level:.2g} absorbance" if np.isfinite(evidence.noise_level) else ""
     if not noise:
         return "The amounts follow from the noise that was given; no channel is left to test the fit."

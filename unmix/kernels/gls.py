@@ -19,6 +19,7 @@ from unmix.kernels.noise import (
     block_power,
     correlation_length,
     interpolation_stride,
+    rows_like,
     whiten,
 )
 
@@ -114,7 +115,9 @@ def _ordinary_residual(y: FloatArray, design: Design) -> FloatArray:
     return rest
 
 
-def fit(y: FloatArray, design: Design, *, correlated: bool = True) -> list[tuple[IntArray, GlsFit]]:
+def fit(
+    y: FloatArray, design: Design, *, correlated: bool = True, known: Autoregression | None = None
+) -> list[tuple[IntArray, GlsFit]]:
     """Solve a chunk of spectra in the metric of each one's own noise.
 
     Parameters
@@ -124,6 +127,8 @@ def fit(y: FloatArray, design: Design, *, correlated: bool = True) -> list[tuple
     design : Design
     correlated : bool
         Whether to look for correlation between neighbouring channels.
+    known : Autoregression, optional
+        The correlation of the noise, of one row, where it is known; nothing is looked for then.
 
     Returns
     -------
@@ -131,7 +136,9 @@ def fit(y: FloatArray, design: Design, *, correlated: bool = True) -> list[tuple
         Groups of spectra with the same order of correlation; together they hold every row once.
     """
     rest = _ordinary_residual(y, design)
-    power = block_power(rest, design.used) if correlated else None
+    if known is not None and known.order[0] > 0:
+        return [(np.arange(y.shape[0]), _coloured(y, design, rows_like(known, y.shape[0])))]
+    power = block_power(rest, design.used) if correlated and known is None else None
     if power is None:
         return [(np.arange(y.shape[0]), _white(y, rest, design))]
     model = autoregression(power, np.full(y.shape[0], int(design.used.sum())))

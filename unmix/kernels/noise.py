@@ -240,6 +240,68 @@ def correlation_length(model: Autoregression) -> FloatArray:
     return length
 
 
+class KnownNoise(NamedTuple):
+    """Noise learnt from scans of one sample.
+
+    Attributes
+    ----------
+    innovation : float
+        Standard deviation of the whitened noise.
+    channel : float
+        Standard deviation of one channel.
+    model : Autoregression
+        Of one row.
+    stride : int
+        Spacing of channels that carry independent information.
+    scans : int
+    """
+
+    innovation: float
+    channel: float
+    model: Autoregression
+    stride: int
+    scans: int
+
+
+def noise_of_scans(scans: FloatArray, free: FloatArray) -> KnownNoise:
+    """Level and correlation of the noise from repeated scans of one sample.
+
+    Parameters
+    ----------
+    scans : ndarray, shape (scans, channels)
+        Two or more, finite; their mean and their polynomial drift are taken out.
+    free : ndarray, shape (channels, terms)
+        The drift, such as the baseline terms of the fit.
+
+    Returns
+    -------
+    KnownNoise
+        White where there are too few channels for a correlation.
+    """
+    n, p = scans.shape
+    apart = (scans - scans.mean(axis=0)) * np.sqrt(n / (n - 1.0))
+    if free.shape[1]:
+        q = np.linalg.qr(free)[0]
+        apart = (apart - (apart @ q) @ q.T) * np.sqrt(p / max(p - free.shape[1], 1))
+    channel = float(np.sqrt(np.mean(apart**2)))
+    power = block_power(apart, np.ones(p, dtype=bool))
+    stride = 1 if power is None else int(interpolation_stride(power.mean(axis=0, keepdims=True))[0])
+    thinned = apart[:, ::stride]
+    power = block_power(thinned, np.ones(thinned.shape[1], dtype=bool))
+    if power is None:
+        blank = np.zeros((1, MAX_ORDER + 1, MAX_ORDER))
+        white = Autoregression(np.zeros(1, dtype=int), blank, np.ones((1, MAX_ORDER + 1)))
+        return KnownNoise(channel, channel, white, stride, n)
+    model = autoregression(power.mean(axis=0, keepdims=True), np.array([thinned.size]))
+    rows = whiten(thinned, rows_like(model, n), np.ones(thinned.shape[1], dtype=bool))
+    return KnownNoise(float(np.sqrt(np.mean(rows**2))), channel, model, stride, n)
+
+
+def rows_like(model: Autoregression, n: int) -> Autoregression:
+    """A model of one row, repeated for n spectra."""
+    return Autoregression(*(np.repeat(part, n, axis=0) for part in model))  # type: ignore[arg-type]
+
+
 def local_noise(y: FloatArray) -> float:
     """Noise of a channel from the third differences of the spectra, which smooth bands hardly touch.
 
@@ -257,4 +319,4 @@ def local_noise(y: FloatArray) -> float:
     if y.shape[1] < 4:
         return max(least, 1e-3 * float(np.abs(y).max(initial=0.0)))
     # the differences of white noise have variance 1 + 9 + 9 + 1
-    return max(float(np.median(np.abs(np.diff(y, 3, axis=1)))) / 0.6745 / np.sqrt(20.0), least)
+    return max(float(np.median(np.abs(np.diff(y, 3, axis=1)))) / 0.6745 / float(np.sqrt(20.0)), least)

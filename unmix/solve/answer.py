@@ -7,6 +7,7 @@ import numpy as np
 
 from unmix.diagnose.residual import Bands
 from unmix.kernels import BoolArray, FloatArray
+from unmix.kernels.noise import KnownNoise
 
 
 @dataclass(frozen=True)
@@ -14,13 +15,15 @@ class Settings:
     """Options of the analysis.
 
     ``known_noise`` says that the weights are one over known standard deviations; otherwise they are relative, and the
-    level and correlation of the noise are found from each residual. ``resolution`` is the rounding of the numbers
+    level and correlation of the noise are found from each residual. ``scans`` holds the noise that repeated scans
+    showed; the weights then are one over its innovations. ``resolution`` is the rounding of the numbers
     relative to the largest of a spectrum.
     """
 
     level: float = 0.95
     nonnegative: bool = True
     known_noise: bool = False
+    scans: KnownNoise | None = None
     resolution: float = 1e-12
 
 

@@ -56,8 +56,9 @@ def quantify(
         Parts of the axis to use, in its unit.
     level : float
         Coverage of the intervals.
-    noise : float or array_like, optional
-        Known standard deviation of a channel, in absorbance.
+    noise : float, array_like or DataArray, optional
+        Known standard deviation of a channel, in absorbance: one, or one a channel. Repeated scans of one sample or
+        blank, dims (scan, spectral), give level and correlation of the noise by their differences.
     noise_model : {'constant', 'detector', 'source'}, optional
         How the noise depends on the light: constant in absorbance, constant in transmittance (the default for
         samples that come as transmittance), or as the root of the transmittance.
@@ -128,10 +129,13 @@ def quantify(
     assumptions += paths.assumptions
     lost_light = samples.attrs.get("measured_as") == "transmittance"
     model = models(noise_model, measured_as_transmittance=lost_light)
+    scans = kept if kept is not None and kept.ndim == 2 else None
     solver = KnownModel(scale_to_path(known, paths), samples[spectral_dim(samples)].values, baseline=baseline,
-                        nonnegative=nonnegative, level=level, noise=kept, noise_model=model)  # fmt: skip
+                        nonnegative=nonnegative, level=level, noise=kept if scans is None else None, noise_model=model,
+                        scans=scans)  # fmt: skip
     settings = {"nonnegative": nonnegative, "baseline": baseline, "regions": regions, "level": level,
-                "noise": noise, "noise_model": model, "path_length": path_length}  # fmt: skip
+                "noise": noise if scans is None else "repeated scans", "noise_model": model,
+                "path_length": path_length}  # fmt: skip
     result = assemble(samples, known, solver, paths, progress)
     return result.assign_attrs(
         kind="quantify",

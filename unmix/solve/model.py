@@ -7,6 +7,7 @@ import numpy as np
 from unmix.diagnose.saturation import saturated
 from unmix.kernels import BoolArray, FloatArray
 from unmix.kernels.linalg import polynomial_terms
+from unmix.kernels.noise import noise_of_scans
 from unmix.solve.analysis import Progress
 from unmix.solve.answer import Answer, Settings
 from unmix.solve.passes import Light, solve
@@ -60,6 +61,8 @@ class KnownModel:
         Standard deviation of a channel, one or one a channel.
     noise_model : str
         One of :data:`unmix.solve.passes.NOISE_MODELS`.
+    scans : ndarray, shape (scans, channels), optional
+        Repeated scans of one sample, from which level and correlation of the noise are taken.
     """
 
     def __init__(
@@ -72,6 +75,7 @@ class KnownModel:
         level: float,
         noise: Any,
         noise_model: str,
+        scans: FloatArray | None = None,
     ) -> None:
         self.pure = pure
         self.free = polynomial_terms(np.asarray(axis, dtype=float), baseline)
@@ -79,6 +83,9 @@ class KnownModel:
         self.level = level
         self.noise: FloatArray | None = None if noise is None else np.asarray(noise, dtype=float)
         self.noise_model = noise_model
+        self.scans = None if scans is None else noise_of_scans(scans, self.free)
+        if self.scans is not None:
+            self.noise = np.asarray(self.scans.channel)
 
     def analyse(
         self,
@@ -114,8 +121,11 @@ class KnownModel:
         bent, plateau = np.zeros(y.shape, dtype=bool), np.full(y.shape[0], np.nan)
         if detect_saturation:
             bent, plateau = saturated(np.where(counts, y, np.nan))
-        settings = Settings(self.level, self.nonnegative, known_noise=self.noise is not None, resolution=resolution)
+        settings = Settings(self.level, self.nonnegative, known_noise=self.noise is not None, scans=self.scans,
+                            resolution=resolution)  # fmt: skip
         relative = np.broadcast_to(np.asarray(pure_uncertainty, dtype=float), (self.pure.shape[0],))
-        noise = 1.0 if self.noise is None else self.noise
+        noise: FloatArray | float = 1.0 if self.noise is None else self.noise
+        if self.scans is not None:
+            noise = self.scans.innovation
         return solve(y, counts, noise, self.pure.T, self.free, relative, settings,
                      Light(self.noise_model, bent, plateau), progress)  # fmt: skip

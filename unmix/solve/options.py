@@ -6,7 +6,7 @@ import numpy as np
 import xarray as xr
 
 from unmix.errors import InputError
-from unmix.spectra import spectral_dim
+from unmix.spectra import as_absorbance, spectral_dim
 
 
 def check_baseline(baseline: Any) -> None:
@@ -44,19 +44,40 @@ def check_flag(name: str, value: Any) -> None:
 
 
 def noise_of_channels(noise: Any, spectra: xr.DataArray) -> xr.DataArray | None:
-    """Known noise as one standard deviation a channel of the spectra as given; None stays None.
+    """Known noise on the channels of the spectra as given; None stays None.
+
+    Returns
+    -------
+    DataArray or None
+        One standard deviation a channel, dims (spectral,), or repeated scans, dims (scan, spectral).
 
     Raises
     ------
     InputError
-        When it is neither one number nor one for every channel, or not above zero.
+        When it is neither one number, nor one for every channel, nor two scans or more on the axis of the spectra.
     """
+    axis = spectra[spectral_dim(spectra)]
+    if isinstance(noise, xr.DataArray) and noise.ndim > 1:
+        return _scans(noise, axis)
     check_noise(noise)
     if noise is None:
         return None
-    axis = spectra[spectral_dim(spectra)]
     values = np.asarray(noise, dtype=float)
     if values.ndim > 1 or (values.ndim == 1 and values.size not in (1, axis.size)):
         raise InputError(f"noise has shape {values.shape} but the spectra have {axis.size} channels",
-                         accepted="give one standard deviation, or one for every channel of the spectra")  # fmt: skip
+                         accepted="give one standard deviation, one for every channel of the spectra, or repeated "
+                         "scans as labelled spectra")  # fmt: skip
     return xr.DataArray(np.broadcast_to(values, axis.shape), dims=axis.dims, coords={axis.name: axis.values})
+
+
+def _scans(noise: xr.DataArray, axis: xr.DataArray) -> xr.DataArray:
+    scans, _ = as_absorbance(noise, name="noise")
+    dim = str(axis.dims[0])
+    if dim not in scans.dims or scans.sizes[dim] != axis.size or not np.allclose(scans[dim], axis, rtol=1e-9):
+        raise InputError("the scans given as noise are on another axis than the spectra",
+                         accepted="give scans measured as the samples are")  # fmt: skip
+    values = np.asarray(scans.values, dtype=float).reshape(-1, axis.size)
+    if values.shape[0] < 2 or not np.isfinite(values).all():
+        raise InputError(f"noise holds {values.shape[0]} scans" + (
+            "" if np.isfinite(values).all() else " with missing channels"), accepted="give two complete scans or more")
+    return xr.DataArray(values, dims=("scan", dim), coords={dim: axis.values})

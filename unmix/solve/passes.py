@@ -31,6 +31,9 @@ _STRAIGHT = 0.7
 _GAIN = 2.0
 _LEAST = 1e-5
 
+#: no absorbance is below this; a fit on few channels may say so of others
+_BRIGHTEST = -5.0
+
 #: channels within this of the highest absorbance that stray light allows are left out
 _BENT = 0.3
 
@@ -189,12 +192,13 @@ def _residual_growth(y: FloatArray, used: BoolArray, fitted: FloatArray) -> Floa
 
 def _without_stray(absorbance: FloatArray, stray: float) -> FloatArray:
     """Absorbance without a share of stray light; far on the plateau it is cut off, those channels do not count."""
-    light = 10.0**-absorbance * (1.0 + stray) - stray
+    light = 10.0 ** -np.maximum(absorbance, _BRIGHTEST) * (1.0 + stray) - stray
     straight: FloatArray = -np.log10(np.maximum(light, 0.1 * stray if stray else np.finfo(float).tiny))
     return straight
 
 
 def _with_stray(absorbance: FloatArray, stray: float) -> FloatArray:
     """Absorbance as it is measured in the presence of a share of stray light."""
-    bent: FloatArray = -np.log10((10.0**-absorbance + stray) / (1.0 + stray))
+    light = 10.0 ** -np.maximum(absorbance, _BRIGHTEST)
+    bent: FloatArray = -np.log10((light + stray) / (1.0 + stray))
     return bent

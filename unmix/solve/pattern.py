@@ -83,13 +83,19 @@ class Pattern:
         y = y * self.weight
         top = np.abs(y).max(axis=1, initial=0.0)
         whole = self.strided(1)
-        stride = np.ones(rows.size, dtype=int) if known else independent_stride(y, whole.design)
+        scans = self.settings.scans
+        if scans is not None:
+            stride = np.full(rows.size, scans.stride)
+        else:
+            stride = np.ones(rows.size, dtype=int) if known else independent_stride(y, whole.design)
         fewest = self.columns.shape[1] + FEWEST_FREEDOM
         for every in np.unique(stride):
             part, shared, step = np.flatnonzero(stride == every), self.strided(int(every)), int(every)
             if step > 1 and int(shared.design.used.sum()) < fewest:
                 shared, step = whole, 1  # too few channels would be left
-            for group, solved in fit(y[part][:, ::step], shared.design, correlated=not known):
+            for group, solved in fit(
+                y[part][:, ::step], shared.design, correlated=not known, known=scans.model if scans else None
+            ):
                 self._write(solved, shared, step, rows[part[group]], top[part[group]], answer)
 
     def _write(

@@ -105,7 +105,8 @@ def assemble(
         evidence.channels_saturated += missing if lost_light else 0
         evidence.channels_missing = 0 if lost_light else missing
         evidence.blank = bool(answer.blank[i])
-        evidence.negative_share = float(np.mean(rows[i, answer.used[i]] < -0.05)) if answer.used[i].any() else 0.0
+        above_baseline = (rows[i] - answer.baseline[i])[answer.used[i]]
+        evidence.negative_share = float(np.mean(above_baseline < -0.05)) if above_baseline.size else 0.0
         judged.append((*judge(evidence, words), evidence))
     return _dataset(samples, pure, solver, paths, answer, judged)
 
