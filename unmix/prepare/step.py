@@ -239,7 +239,7 @@ def _described(step: Step) -> str:
     """The step with the parameters that fit into a line."""
     shown = []
     for name, value in step.get_params(deep=False).items():
-        text = f"{value:g}" if isinstance(value, float) else str(value)
+        text = _text(value)
         shown.append(f"{name}={text}" if len(text) <= 60 else f"{name}=(given)")
     return f"{type(step).__name__}({', '.join(shown)})"
 
@@ -248,6 +248,12 @@ def named(rows: Any, X: Any) -> str:
     """Names of some spectra for a message."""
     names = labels_of(check_spectra(X)) if isinstance(X, xr.DataArray) else None
     return listed(names[i] if names else i + 1 for i in rows)
+
+
+def _text(value: Any) -> str:
+    if isinstance(value, list | tuple):
+        return f"[{', '.join(_text(item) for item in value)}]"
+    return f"{value:g}" if isinstance(value, float) else str(value)
 
 
 def require_same_axis(name: str, own: tuple[str, FloatArray], other: tuple[str, FloatArray]) -> None:
