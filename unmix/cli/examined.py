@@ -13,7 +13,7 @@ from unmix.diagnose.quality import quality
 from unmix.errors import ReadError
 from unmix.kernels import FloatArray
 from unmix.read import read_file
-from unmix.read.collect import files_of, same_axis, stacked, unique_name
+from unmix.read.collect import files_of, reason_of, same_axis, stacked, unique_name
 from unmix.read.found import Found, Options
 from unmix.spectra import spectral_dim
 from unmix.units import SPECTRAL_UNITS
@@ -65,7 +65,7 @@ def examine(sources: Sequence[str], options: Options) -> dict[str, Any]:
                     dim = spectral_dim(spectra)
                     axes.append((dim, np.asarray(spectra[dim].values)))
             except ReadError as error:
-                refused[unique_name(path, refused)] = str(error)
+                refused[unique_name(path, refused)] = reason_of(error, path)
     shared = all(dim == axes[0][0] and same_axis(axes[0][1], axis) for dim, axis in axes[1:])
     return {
         "kind": "inspect",

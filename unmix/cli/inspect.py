@@ -64,7 +64,7 @@ def command(
             with whole_file(json, overwrite) as beside:
                 beside.write_text(json_text(answer), encoding="utf-8")
         for entry in answer["refused"]:
-            print_error(entry["reason"])
+            print_error(f"{entry['file']}: {entry['reason']}")
     raise typer.Exit(_status(answer))
 
 

@@ -107,14 +107,17 @@ def read_all(
             # One bad file of one is no list of reasons
             if not many or len(paths) == 1:
                 raise
-            refused[unique_name(path, refused)] = (
-                str(error).removeprefix(f"{path.name}: ").removeprefix(f"{path.name}, ")
-            )
+            refused[unique_name(path, refused)] = reason_of(error, path)
     if not read:
         reasons = "; ".join(f"{name}: {reason}" for name, reason in list(refused.items())[:NAMED])
         more = f"; and {len(refused) - NAMED} more" if len(refused) > NAMED else ""
         raise ReadError(f"none of the {len(refused)} files could be read ({reasons}{more})")
     return read, refused
+
+
+def reason_of(error: ReadError, path: Path) -> str:
+    """The sentence of an error without the name of the file in front."""
+    return str(error).removeprefix(f"{path.name}: ").removeprefix(f"{path.name}, ")
 
 
 def unique_name(path: Path, taken: Iterable[str]) -> str:
