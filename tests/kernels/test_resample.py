@@ -4,7 +4,8 @@ import numpy as np
 import pytest
 from scipy.interpolate import BarycentricInterpolator
 
-from unmix.kernels.resample import STENCIL, holes, interpolate, locate, stencil_weights
+from unmix.kernels.resample import STENCIL, broadening_weights, holes, interpolate, locate, stencil_weights
+from unmix.kernels.stencil import weighted_sums
 
 
 @pytest.fixture
@@ -107,3 +108,30 @@ def test_float32_stays_and_agrees():
     single = interpolate(axis, values.astype(np.float32), targets)
     assert single.dtype == np.float32
     np.testing.assert_allclose(single, interpolate(axis, values, targets), atol=1e-4)
+
+
+@pytest.mark.parametrize("shape", ["gaussian", "triangle"])
+def test_broadening_weights_equal_a_fine_convolution(shape):
+    axis = np.cumsum(np.random.default_rng(0).uniform(0.8, 1.2, 300))
+    band = lambda x: np.exp(-4 * np.log(2) * ((x - 150) / 30) ** 2)  # noqa: E731
+    targets = np.linspace(axis[0], axis[-1], 50)
+    reached, first, weights = broadening_weights(axis, targets, 20.0, shape)
+    got = weighted_sums(band(axis)[None], first, weights)[0]
+    if shape == "gaussian":
+        # Gaussian widths add in squares
+        wide = np.hypot(30, 20)
+        expected = 30 / wide * np.exp(-4 * np.log(2) * ((targets[reached] - 150) / wide) ** 2)
+    else:
+        u = np.linspace(-20, 20, 8001)
+        line = np.maximum(1 - np.abs(u) / 20, 0) / 20
+        expected = np.trapezoid(line * band(targets[reached][:, None] - u), u, axis=1)
+    np.testing.assert_allclose(got, expected, atol=2e-3)
+    np.testing.assert_allclose(weights.sum(axis=1), 1, rtol=1e-12)
+
+
+def test_broadening_stops_before_ends_and_holes():
+    axis = np.concatenate([np.arange(0.0, 50), np.arange(100.0, 150)])
+    reached, first, weights = broadening_weights(axis, axis, 4.0, "gaussian")
+    assert axis[reached].tolist() == [*range(6, 44), *range(106, 144)]
+    got = weighted_sums(axis[None], first, weights)[0]
+    np.testing.assert_allclose(got, axis[reached], atol=1e-9)

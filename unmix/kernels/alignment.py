@@ -55,12 +55,12 @@ def _fit_block(
     moves = np.zeros((y.shape[0], 2))
     moves[:, 0] = _best_on_grid(y, axis, spline, max_shift, spacing)
     bounds = np.array([max_shift, max_stretch])
-    cost, step, flat = _step(y, axis, spline, moves)
+    cost, step, flat = _step(y, axis, spline, moves, bounds)
     damping = np.ones((y.shape[0], 1))
     settled = np.zeros(y.shape[0], dtype=np.bool_)
     for _ in range(_ITERATIONS):
         tried = np.clip(moves + damping * step, -bounds, bounds)
-        new_cost, new_step, _ = _step(y, axis, spline, tried)
+        new_cost, new_step, _ = _step(y, axis, spline, tried, bounds)
         better = new_cost <= cost
         settled |= (np.abs(tried - moves) < 1e-3 * spacing).all(axis=1)
         take = better & ~settled
@@ -106,9 +106,9 @@ def _cost(y: FloatArray, model: FloatArray) -> FloatArray:
 
 
 def _step(
-    y: FloatArray, axis: FloatArray, spline: CubicSpline, moves: FloatArray
+    y: FloatArray, axis: FloatArray, spline: CubicSpline, moves: FloatArray, bounds: FloatArray
 ) -> tuple[FloatArray, FloatArray, BoolArray]:
-    """Cost, Gauss-Newton step and whether there is no band to go by."""
+    """Cost, Gauss-Newton step within the bounds, and whether there is no band to go by."""
     shape, slope = _model(axis, spline, moves)
     lever = 2.0 * (axis - axis[0]) / (axis[-1] - axis[0]) - 1.0
     centred, model = _projected(y, shape)
@@ -123,4 +123,8 @@ def _step(
     size = np.trace(gram, axis1=1, axis2=2)
     flat = size <= 0
     gram += (np.where(flat, 1.0, 1e-12 * size))[:, None, None] * np.eye(2)
-    return _cost(centred, model), np.linalg.solve(gram, right[..., None])[..., 0], flat
+    step = np.linalg.solve(gram, right[..., None])[..., 0]
+    # what stands at a bound and would go beyond stays, and the other is found without it
+    free = np.abs(moves + np.sign(step) * 1e-9 * bounds) < bounds
+    gram = np.where(free[:, :, None] & free[:, None, :], gram, np.eye(2))
+    return _cost(centred, model), np.linalg.solve(gram, np.where(free, right, 0.0)[..., None])[..., 0], flat

@@ -179,9 +179,18 @@ def broadening_weights(
     columns = np.minimum(columns, axis.size - 1)
     distance = (axis[columns] - inside[:, None]) / width
     profile = np.exp2(-4.0 * distance**2) if shape == "gaussian" else np.maximum(1.0 - np.abs(distance), 0.0)
-    weights = np.where(beyond, 0.0, profile * np.gradient(axis)[columns])
+    weights = np.where(beyond, 0.0, profile * _widths(axis)[columns])
     weights /= weights.sum(axis=1, keepdims=True)
     shift = np.maximum(first + stencil - axis.size, 0)
     for row in np.flatnonzero(shift):
         weights[row] = np.roll(weights[row], shift[row])
     return reached, first - shift, weights
+
+
+def _widths(axis: FloatArray) -> FloatArray:
+    """How much of the axis each channel stands for: half the intervals beside it, holes not counted."""
+    step = np.where(holes(axis), np.nan, np.diff(axis))
+    beside = np.stack([np.append(np.nan, step), np.append(step, np.nan)])
+    known = np.maximum(np.isfinite(beside).sum(axis=0), 1)
+    widths: FloatArray = np.nansum(beside, axis=0) / known
+    return np.where(widths > 0, widths, 1.0)
