@@ -33,6 +33,11 @@ NEGATIVE_LIMIT = 4.0
 _SLOW = 15.0
 _SLOWEST = 14.0
 
+#: where the air absorbs, cm-1, and up to which width that looks like it (from memory, after HITRAN: CO2 at 2349 and
+#: 667 as unresolved bands, water vapour as single narrow lines)
+_AIR = ((2280.0, 2390.0, 120.0, "Carbon dioxide"), (640.0, 700.0, 40.0, "Carbon dioxide"),
+        (1300.0, 2000.0, 14.0, "Water vapour"), (3500.0, 3950.0, 14.0, "Water vapour"))  # fmt: skip
+
 #: bands named in a reason; the rest are counted
 _NAMED_BANDS = 3
 
@@ -86,6 +91,7 @@ class Evidence:
     unbounded: FloatArray = field(default_factory=lambda: np.zeros(0))
     correlation_length: float = 1.0
     blank: bool = False
+    spikes: int = 0
     negative_share: float = 0.0
     freedom: float = float("inf")
     noise_level: float = float("nan")
@@ -190,7 +196,7 @@ def _misfit(evidence: Evidence, words: Words) -> list[tuple[int, str]]:
         place = (f"{plain_number(band.position, 5)} {unit}, about {plain_number(band.width, 2)} {unit} "
                  "wide,")
         if band.height > 0:
-            text = f"A band at {place} is not explained (z = {band.score:.0f}){harm}."
+            text = f"A band at {place} is not explained (z = {band.score:.0f}){harm}.{_air(band, unit)}"
         else:
             text = f"The fit puts in a band at {place} that the sample does not have (z = {band.score:.0f}){harm}."
         found.append((1, text))
@@ -203,6 +209,16 @@ def _misfit(evidence: Evidence, words: Words) -> list[tuple[int, str]]:
             names = ", ".join(words.components[j] for j in bad)
             found.append((2, f"What is not explained is as large as the amount of {names}."))
     return found
+
+
+def _air(band: Band, unit: str) -> str:
+    """A remark when an unexplained band lies where the air absorbs."""
+    if unit != "cm-1":
+        return ""
+    for low, high, widest, what in _AIR:
+        if low <= band.position <= high and band.width <= widest:
+            return f" {what} of the air absorbs there."
+    return ""
 
 
 def _negative(evidence: Evidence, words: Words) -> list[tuple[int, str]]:
@@ -243,9 +259,14 @@ def _noise(evidence: Evidence) -> list[tuple[int, str]]:
 
 
 def _good(evidence: Evidence) -> str:
+    spikes = "" if not evidence.spikes else f" {evidence.spikes} isolated spikes were left out."
+    return _fits(evidence) + spikes
+
+
+def _fits(evidence: Evidence) -> str:
     if np.isfinite(evidence.excess):
         return (f"The residual is like that of a standard ({evidence.excess:.2g} of its limit), and no band is "
-                f"unexplained (largest |z| {abs(evidence.misfit_z):.1f}, limit {evidence.misfit_limit:.1f}).")  # fmt: skip
+                f"unexplained (|z| up to {abs(evidence.misfit_z):.1f}, limit {evidence.misfit_limit:.1f}).")  # fmt: skip
     noise = f"The fit leaves {evidence.noise_level:.2g} absorbance" if np.isfinite(evidence.noise_level) else ""
     if not noise:
         return "The amounts follow from the noise that was given; no channel is left to test the fit."

@@ -240,6 +240,37 @@ def correlation_length(model: Autoregression) -> FloatArray:
     return length
 
 
+def short_correlation(residual: FloatArray, used: BoolArray, basis: FloatArray) -> FloatArray:
+    """Correlation length of residuals too short for a power spectrum, from neighbours alone.
+
+    The lag-one correlation r counts where it is beyond two standard errors, as that of a first-order autoregression,
+    whose length is (1 + r) / (1 - r).
+
+    Parameters
+    ----------
+    residual : ndarray, shape (spectra, channels)
+    used : ndarray of bool, shape (channels,)
+    basis : ndarray, shape (terms, channels)
+        Orthonormal rows that the fit has taken out of the residual, and with them some of its correlation.
+
+    Returns
+    -------
+    ndarray, shape (spectra,)
+        1 or more, in channels.
+    """
+    pairs = used[1:] & used[:-1]
+    both = np.einsum("ij,ij->i", residual[:, 1:][:, pairs], residual[:, :-1][:, pairs])
+    power = np.einsum("ij,ij->i", residual[:, used], residual[:, used])
+    n = max(int(used.sum()), 1)
+    taken = float(np.sum(basis[:, 1:][:, pairs] * basis[:, :-1][:, pairs]))
+    left = max(n - basis.shape[0], 1)
+    with np.errstate(divide="ignore", invalid="ignore"):
+        r = (np.nan_to_num(both / power) * left + taken) / max(int(pairs.sum()), 1)
+    r = np.where(r > 2.0 / np.sqrt(n), np.minimum(r, 0.95), 0.0)
+    length: FloatArray = (1.0 + r) / (1.0 - r)
+    return length
+
+
 class KnownNoise(NamedTuple):
     """Noise learnt from scans of one sample.
 

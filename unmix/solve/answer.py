@@ -40,6 +40,7 @@ FIGURES = (
     "residual_growth",
     "residual_excess",
     "stray_light",
+    "spikes",
 )
 
 
@@ -72,6 +73,7 @@ class Answer:
     residual_growth: FloatArray
     residual_excess: FloatArray
     stray_light: FloatArray
+    spikes: FloatArray
     used: BoolArray
     blank: BoolArray
     bands: list[Bands | None]

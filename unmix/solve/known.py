@@ -24,6 +24,10 @@ from unmix.solve.result import assemble, check_coordinates
 from unmix.spectra import as_absorbance, as_pure, spectral_dim
 
 
+#: channels below which a correlation of the noise cannot be seen (simulated; table in DEVELOPERS.md)
+FEW = 60
+
+
 def quantify(
     spectra: Any,
     pure: Any,
@@ -125,6 +129,9 @@ def quantify(
     if empty:
         raise InputError(f"pure spectrum {listed(empty)} is zero at every channel that is used",
                          accepted="leave it out, or use a part of the axis in which it absorbs")  # fmt: skip
+    if noise is None and p < FEW:
+        assumptions.append(f"with {p} channels the noise is taken as independent from channel to channel; where "
+                           "neighbours share it, as after smoothing, the intervals are too narrow")  # fmt: skip
     paths = path_of(given, known, path_length)
     assumptions += paths.assumptions
     lost_light = samples.attrs.get("measured_as") == "transmittance"

@@ -34,6 +34,11 @@ _LEAST = 1e-5
 #: no absorbance is below this; a fit on few channels may say so of others
 _BRIGHTEST = -5.0
 
+#: a spike: so many noise levels from the fit, its neighbours within this share of it, on so many channels at least
+_SPIKE = 7.0
+_BESIDE = 0.35
+_FEWEST_CHANNELS = 50
+
 #: channels within this of the highest absorbance that stray light allows are left out
 _BENT = 0.3
 
@@ -109,6 +114,13 @@ def solve(
     answer = analyse(
         y, np.where(straight, weight, 0.0), signal, free, pure_uncertainty, settings, progress if quiet else None
     )
+    spikes = _spikes(y, straight, answer.fitted)
+    used, straight = used & ~spikes, straight & ~spikes
+    for spiked in np.flatnonzero(spikes.any(axis=1)):
+        row = np.where(straight[spiked], weight[spiked], 0.0)[None]
+        one = analyse(y[spiked : spiked + 1], row, signal, free, pure_uncertainty, settings)
+        answer.put(int(spiked), one)
+    answer.spikes[:] = spikes.sum(axis=1)
     answer.residual_growth[:] = _residual_growth(y, straight, answer.fitted)
     answer.stray_light[:] = np.nan_to_num(10.0**-light.plateau)
     columns = np.hstack([free, signal])
@@ -117,6 +129,7 @@ def solve(
         if stray or (growth > 0 and np.isfinite(answer.noise_level[i])):
             one = _again(y[i], weight[i], stray, growth, columns, free.shape[1], pure_uncertainty, settings, answer, i)
             answer.put(i, one)
+            answer.spikes[i] = spikes[i].sum()
             answer.stray_light[i] = stray
             answer.residual_growth[i] = 1.0
         if progress and not quiet:
@@ -175,6 +188,20 @@ def _stray_of(i: int, y: FloatArray, used: BoolArray, columns: FloatArray, answe
     if found.gain > _GAIN and found.share > _LEAST:
         return found.share
     return first if flat else 0.0
+
+
+def _spikes(y: FloatArray, used: BoolArray, fitted: FloatArray) -> BoolArray:
+    """Single channels far from the fit between two that are near it: no band is that narrow."""
+    rest = np.where(used & np.isfinite(fitted), np.nan_to_num(y) - np.nan_to_num(fitted), 0.0)
+    found = np.zeros(y.shape, dtype=bool)
+    if y.shape[1] < _FEWEST_CHANNELS:
+        return found
+    level = np.median(np.abs(rest), axis=1, keepdims=True) / 0.6745
+    size = np.abs(rest)
+    beside = np.maximum(size[:, :-2], size[:, 2:])
+    found[:, 1:-1] = (size[:, 1:-1] > _SPIKE * level) & (beside < _BESIDE * size[:, 1:-1]) & (level > 0)
+    # where every hundredth channel stands out, it is the model that is wrong
+    return np.asarray(found & (found.sum(axis=1, keepdims=True) <= max(1, y.shape[1] // 100)))
 
 
 def _residual_growth(y: FloatArray, used: BoolArray, fitted: FloatArray) -> FloatArray:

@@ -20,6 +20,7 @@ from unmix.diagnose.residual import (
 )
 from unmix.kernels import FloatArray, IntArray
 from unmix.kernels.gls import Design, GlsFit, fit, independent_stride, make_design
+from unmix.kernels.noise import ENOUGH, short_correlation
 from unmix.solve.answer import Answer, Settings
 
 #: the limit of the misfit score grows by this where a correlation was estimated, since the estimate is not exact
@@ -98,6 +99,29 @@ class Pattern:
             ):
                 self._write(solved, shared, step, rows[part[group]], top[part[group]], answer)
 
+    def _worth(
+        self, solved: GlsFit, shared: "_Strided", freedom: float
+    ) -> tuple[FloatArray, FloatArray, FloatArray]:
+        """Correlation length, what uncertainties grow by for its sake, and the degrees of freedom, (spectra, 1).
+
+        A correlation found from few independent channels is found too small, since the fit has taken its share; by
+        simulation the estimates then scatter sqrt(n / (n - 1.7 m)) times as far, n independent channels, m terms.
+        """
+        length, n = solved.length, solved.terms.shape[0]
+        if self.settings.known_noise:
+            return length, np.ones(n), np.full((n, 1), np.inf)
+        channels, m = float(shared.design.used.sum()), float(shared.design.reduced.rank)
+        widening = np.ones(n)
+        if solved.filter.shape[1] == 1:
+            if channels >= ENOUGH:
+                return length, widening, np.full((n, 1), freedom)
+            length = short_correlation(solved.residual, shared.design.used, solved.basis[0])
+            # the fit took the noise for white; smooth columns then are uncertain by the root of the length
+            widening = np.sqrt(length)
+        worth = channels / length
+        grow = np.where(length > 1.0, np.sqrt(worth / np.maximum(worth - 1.7 * m, 0.2 * worth)), 1.0)
+        return length, widening * grow, np.where(length > 1.0, np.maximum(worth - m, 1.0), freedom)[:, None]
+
     def _write(
         self, solved: GlsFit, shared: "_Strided", stride: int, rows: IntArray, largest_value: FloatArray, answer: Answer
     ) -> None:
@@ -107,7 +131,7 @@ class Pattern:
         rounding = settings.resolution * largest_value
         sigma = np.ones(rows.size) if settings.known_noise else np.maximum(solved.sigma, rounding)
         answer.blank[rows] = solved.sigma <= rounding
-        trust = np.asarray(np.inf if settings.known_noise else freedom)
+        length, widening, trust = self._worth(solved, shared, freedom)
         relative = np.linalg.norm(solved.factor[:, f:], axis=2)
         with np.errstate(invalid="ignore"):
             at_zero = np.where(np.isinf(relative), np.inf, sigma[:, None] * relative)
@@ -115,6 +139,7 @@ class Pattern:
         limit = shared.limit * (COLOURED if solved.filter.shape[1] > 1 else 1.0)
         scores, bands = shared.misfit(solved, sigma, limit)
         harm, structured = _harm(solved, shared, bands, f)
+        at_zero = at_zero * widening[:, None]
         spread = np.sqrt(np.maximum(at_zero, structured) ** 2 + (reported * self.pure_uncertainty) ** 2)
         ends = interval(amounts, spread, trust, level=settings.level, reported=reported,
                         nonnegative=settings.nonnegative)  # fmt: skip
@@ -132,7 +157,7 @@ class Pattern:
         answer.baseline[rows] = solved.solution[:, : self.n_baseline] @ self.columns[:, : self.n_baseline].T
         answer.fitted[rows] = solved.solution @ self.columns.T
         answer.noise_level[rows] = _channel_noise(solved) * float(np.median(1.0 / self.weight[self.weight != 0]))
-        answer.noise_correlation_length[rows] = solved.length * stride
+        answer.noise_correlation_length[rows] = length * stride
         answer.freedom[rows] = freedom
         answer.misfit_z[rows], answer.misfit_limit[rows] = scores, limit
         for row, one in zip(rows, bands, strict=True):

@@ -44,7 +44,8 @@ _AMOUNTS = {
 #: variables of the result whose names a coordinate must not have
 RESERVED = frozenset({
     *_AMOUNTS, "detected", "measured", "fitted", "residual", "baseline", "used", "noise_level",
-    "noise_correlation_length", "misfit_z", "misfit_limit", "stray_light", "channels_used", "channels_missing",
+    "noise_correlation_length", "misfit_z", "misfit_limit", "stray_light",
+    "spikes", "channels_used", "channels_missing",
     "channels_saturated", "effective_channels", "lack_of_fit", "path_factor", "verdict", "reason", "misfit_position",
     "misfit_width", "misfit_height", "misfit_score", "pure_signal", "variance_inflation", "selectivity",
     "confused_with", "condition_index", "component",
@@ -54,6 +55,7 @@ _FIGURES = {
     "noise_level": ("Standard deviation of the noise of one channel", "signal"),
     "noise_correlation_length": ("Correlation length of the noise", "channels"),
     "misfit_z": ("Largest score of an unexplained band", "1"),
+    "spikes": ("Isolated spikes, left out", "channels"),
     "stray_light": ("Stray light, as a share of the light", "1"),
     "misfit_limit": ("Limit of the score, one false alarm in a hundred spectra", "1"),
 }
@@ -173,6 +175,7 @@ def _evidence(answer: Answer, i: int, samples: xr.DataArray, solver: Solver, pat
         harm=answer.misfit_harm[i],
         growth=float(answer.residual_growth[i]),
         excess=float(answer.residual_excess[i]),
+        spikes=int(np.nan_to_num(answer.spikes[i])),
         stray=float(np.nan_to_num(answer.stray_light[i])),
         negative=answer.negative[i] if solver.nonnegative else np.zeros(0),
         unbounded=answer.unbounded[i] / paths.factor[i],
