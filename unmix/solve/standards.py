@@ -4,17 +4,17 @@ import json
 from typing import Any
 
 import numpy as np
-import pandas as pd
 import xarray as xr
 
 from unmix.diagnose.standards import bent, error_model, outlying, upper_limit
-from unmix.errors import InputError, listed, suggestion
+from unmix.errors import InputError, listed
 from unmix.kernels import FloatArray
 from unmix.kernels.noise import local_noise
 from unmix.kernels.variation import choose_floor, in_own_space, learn, leave_out, like_groups
 from unmix.prepare.axis import select_regions
 from unmix.provenance import provenance
 from unmix.solve.learnt import LearntModel
+from unmix.solve.tables import match_table
 from unmix.spectra import as_absorbance, labels_of, rows_of, spectral_dim
 from unmix.units import SPECTRAL_UNITS
 
@@ -71,8 +71,7 @@ def learn_pure(
 
     Examples
     --------
-    >>> import pandas as pd
-    >>> from unmix.spectra import make_spectra
+    >>>     >>> from unmix.spectra import make_spectra
     >>> known = pd.DataFrame({"dye": [1.0, 2.0, 3.0, 4.0, 5.0]}, index=list("abcde"))
     >>> standards = make_spectra([[0.1, 0.21], [0.2, 0.4], [0.31, 0.6], [0.4, 0.81], [0.5, 1.0]], [500, 510],
     ...                          dim="wavelength", quantity="absorbance", labels=list("abcde"))
@@ -85,7 +84,7 @@ def learn_pure(
         raise InputError(f"spectra has dimensions {listed(samples.dims)}", accepted="give (sample, spectral)")
     if regions is not None:
         samples = select_regions(samples, regions)
-    table, more = match_amounts(samples, amounts)
+    table, more = match_table(samples, amounts)
     assumptions += more
     values = np.asarray(rows_of(samples), dtype=np.float64)
     names = [str(c) for c in table.columns]
@@ -138,80 +137,6 @@ def learn_pure(
              **_path(samples),
              **provenance("learn_pure", {"unit": unit, "regions": regions}, spectra=given)}  # fmt: skip
     return xr.Dataset(data, coords=coords, attrs=attrs)
-
-
-def match_amounts(spectra: xr.DataArray, amounts: Any) -> tuple[pd.DataFrame, list[str]]:
-    """Amounts in the order of the spectra, matched by name.
-
-    Parameters
-    ----------
-    spectra : DataArray, dims (sample, spectral)
-    amounts : DataFrame or DataArray
-        The index, the leading coordinate or a first column of text holds the names.
-
-    Returns
-    -------
-    table : DataFrame
-    assumptions : list of str
-
-    Raises
-    ------
-    InputError
-        Missing, surplus-free matching is impossible, or a cell is not a number.
-    """
-    table = _as_table(amounts)
-    leading = spectra.dims[0]
-    named = any(name in spectra.coords for name in ("label", str(leading), "file"))
-    if not named or isinstance(table.index, pd.RangeIndex):
-        if len(table) != spectra.sizes[leading]:
-            raise InputError(f"amounts has {len(table)} rows for {spectra.sizes[leading]} spectra",
-                             accepted="name the rows as the spectra, or give one row each in order")  # fmt: skip
-        return _numbers(table), ["amounts were matched to spectra by order, since one of them has no names"]
-    labels = labels_of(spectra)
-    index = [str(name) for name in table.index]
-    double = sorted({name for name in index if index.count(name) > 1})
-    if double:
-        raise InputError(f"amounts: row {listed(double)} appears more than once", accepted="give each sample one row")
-    table = table.set_axis(index, axis=0)
-    missing = [name for name in labels if name not in table.index]
-    if missing:
-        at = labels.index(missing[0])
-        raise InputError(
-            f"amounts: no row for sample {listed(missing)} (the first is spectrum {at + 1} of {len(labels)})"
-            f"{suggestion(missing[0], index)}",
-            accepted="name the rows as the spectra",
-        )
-    return _numbers(table.loc[labels]), []
-
-
-def _as_table(amounts: Any) -> pd.DataFrame:
-    if isinstance(amounts, xr.DataArray):
-        if amounts.ndim != 2:
-            raise InputError(f"amounts has dimensions {listed(amounts.dims)}", accepted="give (sample, component)")
-        rows, columns = amounts.dims
-        names = amounts["label"] if "label" in amounts.coords else amounts.coords.get(rows)
-        index = None if names is None else [str(name) for name in names.values]
-        return pd.DataFrame(amounts.values, index=index, columns=[str(c) for c in amounts[columns].values])
-    if not isinstance(amounts, pd.DataFrame):
-        raise InputError(f"amounts is a {type(amounts).__name__}", accepted="give a DataFrame or a DataArray")
-    if isinstance(amounts.index, pd.RangeIndex) and len(amounts.columns) and not _numeric(amounts.iloc[:, 0]):
-        return amounts.set_index(amounts.columns[0])
-    return amounts
-
-
-def _numeric(column: pd.Series) -> bool:
-    return bool(pd.api.types.is_numeric_dtype(column))
-
-
-def _numbers(table: pd.DataFrame) -> pd.DataFrame:
-    for name in table.columns:
-        numbers = pd.to_numeric(table[name], errors="coerce")
-        bad = numbers.isna() | (numbers < 0)
-        if bad.any():
-            row = table.index[int(bad.to_numpy().argmax())]
-            raise InputError(f"amounts: '{table.loc[row, name]}' for '{name}' in sample '{row}'",
-                             accepted="give a number that is not negative, 0 where there is none")  # fmt: skip
-    return table.astype(float)
 
 
 def _check(values: FloatArray, c: FloatArray, samples: xr.DataArray, names: list[str]) -> None:
