@@ -266,7 +266,7 @@ def _good(evidence: Evidence) -> str:
 def _fits(evidence: Evidence) -> str:
     if np.isfinite(evidence.excess):
         return (f"The residual is like that of a standard ({evidence.excess:.2g} of its limit), and no band is "
-                f"unexplained (|z| up to {abs(evidence.misfit_z):.1f}, limit {evidence.misfit_limit:.1f}).")  # fmt: skip
+                f"unexplained (|z| {abs(evidence.misfit_z):.1f}, limit {evidence.misfit_limit:.1f}).")  # fmt: skip
     noise = f"The fit leaves {evidence.noise_level:.2g} absorbance" if np.isfinite(evidence.noise_level) else ""
     if not noise:
         return "The amounts follow from the noise that was given; no channel is left to test the fit."

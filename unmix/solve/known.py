@@ -23,7 +23,6 @@ from unmix.solve.paths import path_of, scale_to_path
 from unmix.solve.result import assemble, check_coordinates
 from unmix.spectra import as_absorbance, as_pure, spectral_dim
 
-
 #: channels below which a correlation of the noise cannot be seen (simulated; table in DEVELOPERS.md)
 FEW = 60
 
