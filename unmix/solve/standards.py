@@ -71,7 +71,8 @@ def learn_pure(
 
     Examples
     --------
-    >>>     >>> from unmix.spectra import make_spectra
+    >>> import pandas as pd
+    >>> from unmix.spectra import make_spectra
     >>> known = pd.DataFrame({"dye": [1.0, 2.0, 3.0, 4.0, 5.0]}, index=list("abcde"))
     >>> standards = make_spectra([[0.1, 0.21], [0.2, 0.4], [0.31, 0.6], [0.4, 0.81], [0.5, 1.0]], [500, 510],
     ...                          dim="wavelength", quantity="absorbance", labels=list("abcde"))
