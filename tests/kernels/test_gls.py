@@ -81,7 +81,7 @@ def test_weights_are_weighted_least_squares(rng):
 
 
 def test_correlated_noise_is_dense_generalised_least_squares(rng):
-    y, design, _ = problem(rng, 12, phi=0.8)
+    y, design, _ = problem(rng, 5, phi=0.8)
     groups = fit(y, design)
     assert any(one.filter.shape[1] > 1 for _, one in groups)
     for rows, one in groups:
@@ -97,7 +97,7 @@ def test_correlated_noise_is_dense_generalised_least_squares(rng):
 
 
 def test_bounded_solution_in_correlated_noise_is_the_bounded_optimum(rng):
-    y, design, _ = problem(rng, 30, phi=0.8)
+    y, design, _ = problem(rng, 15, phi=0.8)
     lowest = np.r_[-np.inf, -np.inf, 0.0, 0.0, 0.0]
     active = 0
     for rows, one in fit(y, design):
@@ -108,7 +108,7 @@ def test_bounded_solution_in_correlated_noise_is_the_bounded_optimum(rng):
             expected = lsq_linear(whitener @ design.a, whitener @ y[row], (lowest, np.inf), tol=1e-14).x
             assert one.solution[i] == pytest.approx(expected, abs=1e-5)
             active += (one.terms[i, 2:] < 0).any()
-    assert active > 3
+    assert active > 1
 
 
 @pytest.mark.parametrize(("phi", "margin"), [(0.0, 0.15), (0.8, 0.3)])
@@ -141,7 +141,7 @@ def test_dependent_components_have_no_finite_spread_and_the_rest_keeps_its(rng):
 def test_no_freedom_no_level():
     signal = np.array([[1.0, 0.2], [0.1, 1.0]])
     design = make_design(signal, np.empty((2, 0)), np.ones(2), nonnegative=True)
-    (_, one), = fit(np.array([[0.5, 0.3]]), design)
+    ((_, one),) = fit(np.array([[0.5, 0.3]]), design)
     assert one.solution[0] == pytest.approx(np.linalg.solve(signal, [0.5, 0.3]))
     assert np.isnan(one.sigma).all()
 
