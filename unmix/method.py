@@ -19,6 +19,7 @@ from unmix import prepare
 from unmix.errors import InputError, ReadError, listed, suggestion
 from unmix.files import whole_file
 from unmix.methodfile import MethodText, parse, table_text
+from unmix.prepare.additivity import require_additive
 from unmix.prepare.step import Step
 from unmix.read import read
 from unmix.spectra import check_spectra, make_spectra, spectral_dim
@@ -178,6 +179,18 @@ class Method:
                 raise source.error(f"{solver} has no option '{key}'{suggestion(key, list(accepted))}", "solver", 0, key,
                                    accepted=f"it has {', '.join(sorted(accepted))}")  # fmt: skip
         return dict(self.settings)
+
+    def require_additive(self, purpose: str, spectra: xr.DataArray | None = None) -> None:
+        """Raise InputError, naming the step and the alternative, unless every step keeps additivity.
+
+        Parameters
+        ----------
+        purpose : str
+            What needs additivity, such as ``quantify``.
+        spectra : DataArray, optional
+            Checked for missing channels and for steps taken earlier.
+        """
+        require_additive(self.steps, purpose, spectra)
 
     # -- text and files -----------------------------------------------------------------------------------------
 

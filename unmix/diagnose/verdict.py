@@ -29,6 +29,9 @@ _PRESENT = 5.0
 #: standard uncertainties below zero at which a negative amount says that the model is wrong
 NEGATIVE_LIMIT = 4.0
 
+#: lack of fit, as a share of the spectrum, from which an unexplained band makes every amount doubtful beyond use
+_UNEXPLAINED = 0.25
+
 #: noise is correlated over at most this part of the channels, or over this many
 _SLOW = 15.0
 _SLOWEST = 14.0
@@ -91,6 +94,7 @@ class Evidence:
     unbounded: FloatArray = field(default_factory=lambda: np.zeros(0))
     correlation_length: float = 1.0
     blank: bool = False
+    lack_of_fit: float = 0.0
     spikes: int = 0
     negative_share: float = 0.0
     freedom: float = float("inf")
@@ -203,6 +207,8 @@ def _misfit(evidence: Evidence, words: Words) -> list[tuple[int, str]]:
     rest = len(evidence.bands) - _NAMED_BANDS
     if rest > 0:
         found.append((1, f"{rest} further bands are not explained."))
+    if found and evidence.lack_of_fit > _UNEXPLAINED:
+        found.append((2, f"The fit leaves {100 * evidence.lack_of_fit:.0f}% of the spectrum unexplained."))
     if found and evidence.harm.size:
         bad = [j for j in np.flatnonzero(evidence.detected) if evidence.harm[j] >= evidence.concentration[j]]
         if bad:

@@ -6,11 +6,12 @@ pipelines stands in ``estimator``.
 
 import json
 from collections.abc import Sequence
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 import xarray as xr
 
+from unmix.diagnose.saturation import saturated
 from unmix.errors import InputError, listed
 from unmix.prepare.axis import common_axis, select_regions
 from unmix.provenance import provenance
@@ -21,7 +22,10 @@ from unmix.solve.options import check_baseline, check_flag, check_level, noise_o
 from unmix.solve.passes import noise_model as models
 from unmix.solve.paths import path_of, scale_to_path
 from unmix.solve.result import assemble, check_coordinates
-from unmix.spectra import as_absorbance, as_pure, spectral_dim
+from unmix.spectra import as_absorbance, as_pure, rows_of, spectral_dim
+
+if TYPE_CHECKING:
+    from unmix.method import Method
 
 #: channels below which a correlation of the noise cannot be seen (simulated; table in DEVELOPERS.md)
 FEW = 60
@@ -38,6 +42,7 @@ def quantify(
     noise: Any = None,
     noise_model: str | None = None,
     path_length: Any = None,
+    method: "Method | None" = None,
     progress: Progress | None = None,
 ) -> xr.Dataset:
     """Find how much of each known component is in each sample, how sure, and whether something is missing.
@@ -68,6 +73,9 @@ def quantify(
     path_length : float, str or sequence, optional
         Of the samples: centimetres or a text such as ``"25 um"``, one for all or one each. Takes precedence over
         the coordinate ``path_length``.
+    method : Method, optional
+        Preparation that samples and pure spectra pass alike, once they are on common channels; every step must keep
+        Beer-Lambert additivity. Settings that it holds take the place of the options above.
     progress : callable, optional
         Called with the number of spectra finished so far.
 
@@ -99,28 +107,80 @@ def quantify(
     >>> [f"{value:.2e}" for value in found.concentration.values[0]]
     ['8.86e-03', '3.60e-02']
     """
+    options = {"nonnegative": nonnegative, "baseline": baseline, "regions": regions, "level": level, "noise": noise,
+               "noise_model": noise_model, "path_length": path_length}  # fmt: skip
+    if method is not None and method.solver:
+        options |= method.settings_for("quantify", options)
+        return quantify(spectra, pure, method=type(method)(method.steps, method.name), progress=progress, **options)
     check_baseline(baseline)
     check_level(level)
     check_flag("nonnegative", nonnegative)
     if isinstance(pure, xr.Dataset):
+        if method is not None:
+            raise InputError("a method cannot prepare what was learnt already",
+                             accepted="prepare the standards before learn_pure, and the samples alike")  # fmt: skip
         return quantify_learnt(spectra, pure, nonnegative=nonnegative, level=level, regions=regions,
                                path_length=path_length, progress=progress)  # fmt: skip
     samples, assumptions = as_absorbance(spectra, name="spectra")
     known, more = as_absorbance(as_pure(pure), name="pure")
-    assumptions += more
     samples = check_coordinates(samples)
     given = samples
     sd = noise_of_channels(noise, given)
     samples, known, notes = common_axis(samples, known)
+    if method is not None:
+        samples, known = _prepared(samples, known, method, noise)
     if regions is not None:
         samples, known = select_regions(samples, regions), select_regions(known, regions)
-    kept = None if sd is None else sd.sel({spectral_dim(samples): samples[spectral_dim(samples)]}).values
+    _require_enough(known, baseline)
+    if noise is None and known.shape[1] < FEW:
+        more.append(f"with {known.shape[1]} channels the noise is taken as independent from channel to channel; where "
+                    "neighbours share it, as after smoothing, the intervals are too narrow")  # fmt: skip
+    paths = path_of(given, known, path_length)
+    model = models(noise_model, measured_as_transmittance=samples.attrs.get("measured_as") == "transmittance")
+    axis = samples[spectral_dim(samples)]
+    kept = None if sd is None else sd.sel({str(axis.name): axis}).values
+    scans = kept if kept is not None and kept.ndim == 2 else None
+    solver = KnownModel(scale_to_path(known, paths), axis.values, baseline=baseline, nonnegative=nonnegative,
+                        level=level, noise=kept if scans is None else None, noise_model=model, scans=scans)  # fmt: skip
+    result = assemble(samples, known, solver, paths, progress)
+    options |= {"noise": noise if scans is None else "repeated scans", "noise_model": model,
+                "method": "" if method is None else method.to_text()}  # fmt: skip
+    return result.assign_attrs(
+        kind="quantify",
+        level=level,
+        baseline="none" if baseline is None else int(baseline),
+        assumptions=json.dumps(assumptions + more + paths.assumptions),
+        notes=json.dumps(notes + json.loads(given.attrs.get("notes", "[]"))),
+        **provenance("quantify", options, spectra=given, pure=pure),
+    )
+
+
+def _prepared(
+    samples: xr.DataArray, known: xr.DataArray, method: "Method", noise: Any
+) -> tuple[xr.DataArray, xr.DataArray]:
+    """Samples and pure spectra after the same steps; channels at flat tops are taken out before."""
+    method.require_additive("quantify", samples)
+    method.require_additive("quantify", known)
+    if noise is not None and method.steps:
+        raise InputError("noise is that of the spectra as measured, and the method changes it",
+                         accepted="leave noise out, so that it is found after the method")  # fmt: skip
+    if samples.attrs.get("quantity") == "absorbance":
+        bent, _ = saturated(np.asarray(rows_of(samples), dtype=np.float64))
+        if bent.any():
+            samples = samples.where(~bent.reshape(samples.shape))
+            method.require_additive("quantify", samples)
+    prepared: xr.DataArray = method.apply(samples)
+    return prepared.assign_attrs(prepared="yes"), method.apply(known)
+
+
+def _require_enough(known: xr.DataArray, baseline: int | None) -> None:
+    """Refuse fewer channels than unknowns, and pure spectra of which nothing is left."""
     k, p = known.shape
-    terms = k + (0 if baseline is None else baseline + 1)
-    if p < terms:
+    extra = 0 if baseline is None else baseline + 1
+    if p < k + extra:
         raise InputError(
-            f"{p} channels cannot determine {terms} unknowns ({k} components"
-            + (")" if baseline is None else f" and {terms - k} baseline terms)"),
+            f"{p} channels cannot determine {k + extra} unknowns ({k} components"
+            + (")" if baseline is None else f" and {extra} baseline terms)"),
             accepted="give more channels, fewer components or a lower baseline order (None for no baseline)",
         )
     empty = [str(name) for name, row in zip(known["component"].values, known.values, strict=True)
@@ -128,26 +188,3 @@ def quantify(
     if empty:
         raise InputError(f"pure spectrum {listed(empty)} is zero at every channel that is used",
                          accepted="leave it out, or use a part of the axis in which it absorbs")  # fmt: skip
-    if noise is None and p < FEW:
-        assumptions.append(f"with {p} channels the noise is taken as independent from channel to channel; where "
-                           "neighbours share it, as after smoothing, the intervals are too narrow")  # fmt: skip
-    paths = path_of(given, known, path_length)
-    assumptions += paths.assumptions
-    lost_light = samples.attrs.get("measured_as") == "transmittance"
-    model = models(noise_model, measured_as_transmittance=lost_light)
-    scans = kept if kept is not None and kept.ndim == 2 else None
-    solver = KnownModel(scale_to_path(known, paths), samples[spectral_dim(samples)].values, baseline=baseline,
-                        nonnegative=nonnegative, level=level, noise=kept if scans is None else None, noise_model=model,
-                        scans=scans)  # fmt: skip
-    settings = {"nonnegative": nonnegative, "baseline": baseline, "regions": regions, "level": level,
-                "noise": noise if scans is None else "repeated scans", "noise_model": model,
-                "path_length": path_length}  # fmt: skip
-    result = assemble(samples, known, solver, paths, progress)
-    return result.assign_attrs(
-        kind="quantify",
-        level=level,
-        baseline="none" if baseline is None else int(baseline),
-        assumptions=json.dumps(assumptions),
-        notes=json.dumps(notes + json.loads(given.attrs.get("notes", "[]"))),
-        **provenance("quantify", settings, spectra=given, pure=pure),
-    )

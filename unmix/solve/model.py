@@ -128,4 +128,4 @@ class KnownModel:
         if self.scans is not None:
             noise = self.scans.innovation
         return solve(y, counts, noise, self.pure.T, self.free, relative, settings,
-                     Light(self.noise_model, bent, plateau), progress)  # fmt: skip
+                     Light(self.noise_model, detect_saturation, bent, plateau), progress)  # fmt: skip

@@ -54,6 +54,8 @@ class Light:
     ----------
     model : str
         One of ``NOISE_MODELS``.
+    bends : bool
+        Whether the spectra are absorbance as measured, which stray light can bend.
     bent : ndarray of bool, shape (spectra, channels)
         Channels near a flat top, left out of the first fit.
     plateau : ndarray, shape (spectra,)
@@ -61,6 +63,7 @@ class Light:
     """
 
     model: str
+    bends: bool
     bent: BoolArray
     plateau: FloatArray
 
@@ -125,7 +128,9 @@ def solve(
     answer.stray_light[:] = np.nan_to_num(10.0**-light.plateau)
     columns = np.hstack([free, signal])
     for i in range(y.shape[0]):
-        stray = _stray_of(i, y, used, columns, answer, light) if np.isfinite(answer.noise_level[i]) else 0.0
+        stray = 0.0
+        if light.bends and np.isfinite(answer.noise_level[i]):
+            stray = _stray_of(i, y, used, columns, answer, light)
         if stray or (growth > 0 and np.isfinite(answer.noise_level[i])):
             one = _again(y[i], weight[i], stray, growth, columns, free.shape[1], pure_uncertainty, settings, answer, i)
             answer.put(i, one)

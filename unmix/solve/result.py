@@ -90,7 +90,7 @@ def assemble(
     usable = np.isfinite(solver.pure).all(axis=0)
     given = present & usable
     uncertainty = _relative_uncertainty(pure)
-    bends = samples.attrs.get("quantity") == "absorbance"
+    bends = samples.attrs.get("quantity") == "absorbance" and "prepared" not in samples.attrs
     answer = solver.analyse(rows, given, pure_uncertainty=uncertainty,
                                resolution=1e-6 if single else 1e-12,
                                detect_saturation=bends, progress=progress)  # fmt: skip
@@ -106,6 +106,8 @@ def assemble(
         evidence.channels_saturated = int((given[i] & ~answer.used[i]).sum() if bent else 0)
         evidence.channels_saturated += missing if lost_light else 0
         evidence.channels_missing = 0 if lost_light else missing
+        left, whole = (rows[i] - answer.fitted[i])[answer.used[i]], rows[i, answer.used[i]]
+        evidence.lack_of_fit = float(np.linalg.norm(left) / max(np.linalg.norm(whole), np.finfo(float).tiny))
         evidence.blank = bool(answer.blank[i])
         above_baseline = (rows[i] - answer.baseline[i])[answer.used[i]]
         evidence.negative_share = float(np.mean(above_baseline < -0.05)) if above_baseline.size else 0.0
