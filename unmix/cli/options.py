@@ -19,6 +19,10 @@ Pure = Annotated[
     list[str],
     typer.Option("--pure", metavar="PATH", help="Pure spectra: folder, file or pattern; may be repeated."),
 ]
+MethodFile = Annotated[
+    Path | None,
+    typer.Option("--method", metavar="FILE", help="A saved method: steps for samples and pure spectra, and settings."),
+]
 Csv = Annotated[
     Path | None,
     typer.Option("--csv", metavar="FILE", help="Write the table as CSV ('-' prints it instead)."),

@@ -12,6 +12,7 @@ EXAMPLE = """
 Example:
   unmix quantify drums/*.jdx --pure pure/ --baseline 1 --report drums.html
   unmix quantify run.csv --pure pure/ --regions 1650-1800 --path-length "25 um"
+  unmix quantify run.csv --pure pure/ --method derivative.toml
   unmix quantify run.csv --standards standards/ --amounts amounts.csv --report run.html
 """
 
@@ -46,6 +47,7 @@ def command(
     pure_unit: options.PureUnit = None,
     pure_quantity: options.PureQuantity = None,
     per: options.Per = None,
+    method: options.MethodFile = None,
     csv: options.Csv = None,
     xlsx: options.Xlsx = None,
     json: options.Json = None,
@@ -72,10 +74,12 @@ def command(
             "noise": noise,
             "nonnegative": not no_nonnegative,
         }
-        from unmix.cli.samples import known_spectra, quantify_files  # noqa: PLC0415 - heavy
+        from unmix.cli.samples import known_spectra, quantify_files, read_method  # noqa: PLC0415 - heavy
         from unmix.cli.show import print_amounts, print_reasons, print_refused, remarks_of  # noqa: PLC0415 - heavy
 
         given = {"unit": pure_unit, "quantity": pure_quantity, "per": per}
+        if method is not None:
+            settings["method"] = read_method(method)
         known = known_spectra(pure, standards, amounts, settings, given)
         run = quantify_files(samples, known, settings, unit=unit, quantity=quantity)
         shown.update(remarks_of(run.results))

@@ -5,6 +5,7 @@ import math
 from collections import Counter
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
+from importlib import import_module
 from pathlib import Path
 from typing import Any
 
@@ -51,6 +52,17 @@ def read_pure(
         # A component left out would make the answer wrong, so one bad pure spectrum stops the run
         raise InputError(f"a pure spectrum could not be read: {reason}", where=str(file))
     return as_pure(read)
+
+
+def read_method(path: Path) -> Any:
+    """A method from its file; scikit-learn is loaded only for this.
+
+    Raises
+    ------
+    UnmixError
+        When the file cannot be used.
+    """
+    return import_module("unmix.method").Method.from_file(path)
 
 
 def known_spectra(
