@@ -69,8 +69,8 @@ def fitted_below(
         active, last = np.arange(members.size), np.full(target.shape, np.inf)
         coefficients = np.empty((members.size, order + 1))
         for _ in range(iterations):
-            coefficients[active] = np.einsum("ij,jk->ik", target[active], q)
-            fit = np.einsum("ik,jk->ij", coefficients[active], q)
+            coefficients[active] = target[active] @ q
+            fit = coefficients[active] @ q.T
             count[members[active]] += 1
             still = np.abs(fit - last[active]).max(axis=1) > limit[active]
             settled[members[active[~still]]] = True
@@ -79,5 +79,5 @@ def fitted_below(
             active = active[still]
             if not active.size:
                 break
-        curves[members] = np.einsum("ij,jk->ik", np.linalg.solve(r, coefficients.T).T, every.T)
+        curves[members] = np.linalg.solve(r, coefficients.T).T @ every.T
     return curves, count, settled

@@ -68,8 +68,8 @@ class _Shrinking(Step):
             basis = self.basis_[:, present]
             if basis.shape[1] < basis.shape[0]:
                 continue
-            part = np.einsum("ij,kj->ik", rows[np.ix_(members, present)], np.linalg.pinv(basis.T))
-            answer[members] = rows[members] - np.einsum("ik,kj->ij", part * (1.0 - self.kept_part_), self.basis_)
+            part = rows[np.ix_(members, present)] @ np.linalg.pinv(basis)
+            answer[members] = rows[members] - (part * (1.0 - self.kept_part_)) @ self.basis_
         return answer
 
 
@@ -241,8 +241,8 @@ class VapourRemoval(Step):
             if np.count_nonzero(present) < self._vapour.shape[0]:
                 continue
             solve = np.linalg.pinv(self._rough[present])
-            amounts = np.einsum("ij,kj->ik", rough[np.ix_(members, present)], solve)
-            answer[members] = rows[members] - np.einsum("ik,kj->ij", amounts, self._vapour)
+            amounts = rough[np.ix_(members, present)] @ solve.T
+            answer[members] = rows[members] - amounts @ self._vapour
         return answer
 
 

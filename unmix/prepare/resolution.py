@@ -52,6 +52,8 @@ class Resample(Step):
     lost_because = "the line shape acts on transmittance, in which contributions do not add up"
     instead = "give through='absorbance', and stay where bands are weak or resolved"
     no_answer = "with too few channels"
+    # beside a missing channel the interpolation goes by other channels
+    complete_only = True
     accepts: ClassVar[Mapping[str, Rule]] = {
         "spacing": number(above=0).or_none("no change"),
         "axis": spectrum().or_none("no change"),

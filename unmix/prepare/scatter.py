@@ -231,8 +231,8 @@ class ExtendedScatterCorrection(Step):
             if model.shape[0] < model.shape[1]:
                 continue
             solve = np.linalg.pinv(model) / self._length[:, None]
-            amounts = np.einsum("ij,kj->ki", solve, rows[np.ix_(members, present)])
-            rest = rows[members] - np.einsum("kj,ij->ki", amounts[:, 1:], self._model[:, 1:])
+            amounts = rows[np.ix_(members, present)] @ solve.T
+            rest = rows[members] - amounts[:, 1:] @ self._model[:, 1:].T
             factor = amounts[:, :1]
             size = _over(_size(rows[members]), np.abs(self.reference_).max())
             usable = np.abs(factor) > _ROUNDING * size
