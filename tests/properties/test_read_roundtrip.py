@@ -14,7 +14,8 @@ import unmix
 from unmix.errors import ReadError, UnmixWarning
 from unmix.read import read_file
 from unmix.read.found import Options
-from unmix.read.ordinates import decode, pack
+from unmix.read.ordinates import decode
+from unmix.read.pack import pack
 from unmix.spectra import make_spectra
 
 ORDINARY = settings(max_examples=60, deadline=None, suppress_health_check=[HealthCheck.too_slow])

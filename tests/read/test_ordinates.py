@@ -4,7 +4,8 @@ import numpy as np
 import pytest
 
 from unmix.errors import ReadError
-from unmix.read.ordinates import decode, decode_pairs, last_digit, pack
+from unmix.read.ordinates import decode, decode_pairs, last_digit
+from unmix.read.pack import pack
 
 
 def values(text, limit=1000):

@@ -12,7 +12,7 @@ import xarray as xr
 from unmix.errors import InputError
 from unmix.kernels import FloatArray
 from unmix.ordinate_units import ordinate_text
-from unmix.read.ordinates import pack
+from unmix.read.pack import pack
 from unmix.spectra import labels_of, spectral_dim
 
 #: the longest line of a data table

@@ -1,4 +1,4 @@
-"""Packed ordinates of JCAMP-DX to numbers, a whole table at a time: text in, arrays out.
+"""Packed ordinates of JCAMP-DX to numbers, a whole table at a time: text in, arrays out; ``pack.py`` is the way back.
 
 AFFN, PAC, SQZ, DIF and DUP may be mixed in one line; the first character of a value says which it is. What the
 numbers mean, and whether they agree with the header, is judged in ``jcamp.py``.
@@ -9,7 +9,6 @@ R. S. McDonald and P. A. Wilks, JCAMP-DX: a standard form for exchange of infrar
 form, Appl. Spectrosc. 42 (1988) 151-162, section 4.5 and Table VII.
 """
 
-from collections.abc import Iterator, Sequence
 from dataclasses import dataclass, field
 
 import numpy as np
@@ -20,9 +19,9 @@ from unmix.kernels import BoolArray, FloatArray, IntArray
 # Classes of a byte in a data table. The order matters: from _SIGN on, a byte always starts a value.
 _BLANK, _INSIDE, _DIGIT, _DOT, _SIGN, _SQZ, _DIF, _DUP, _MISSING, _WRONG = range(10)
 
-_SQZ_DIGITS = {"@": 0, **{c: i for i, c in enumerate("ABCDEFGHI", 1)}, **{c: -i for i, c in enumerate("abcdefghi", 1)}}
-_DIF_DIGITS = {"%": 0, **{c: i for i, c in enumerate("JKLMNOPQR", 1)}, **{c: -i for i, c in enumerate("jklmnopqr", 1)}}
-_DUP_DIGITS = {c: i for i, c in enumerate("STUVWXYZs", 1)}
+SQZ_DIGITS = {"@": 0, **{c: i for i, c in enumerate("ABCDEFGHI", 1)}, **{c: -i for i, c in enumerate("abcdefghi", 1)}}
+DIF_DIGITS = {"%": 0, **{c: i for i, c in enumerate("JKLMNOPQR", 1)}, **{c: -i for i, c in enumerate("jklmnopqr", 1)}}
+DUP_DIGITS = {c: i for i, c in enumerate("STUVWXYZs", 1)}
 
 #: a value longer than this is turned by ``float`` instead of digit by digit
 _EXACT_DIGITS = 15
@@ -35,7 +34,7 @@ def _byte_tables() -> tuple[IntArray, FloatArray, FloatArray]:
     lead = np.zeros(256)
     sign = np.ones(256)
     kind[[ord(c) for c in " \t\n,;"]] = _BLANK
-    for code, digits in ((_SQZ, _SQZ_DIGITS), (_DIF, _DIF_DIGITS), (_DUP, _DUP_DIGITS),
+    for code, digits in ((_SQZ, SQZ_DIGITS), (_DIF, DIF_DIGITS), (_DUP, DUP_DIGITS),
                          (_DIGIT, {str(d): d for d in range(10)})):  # fmt: skip
         for char, digit in digits.items():
             kind[ord(char)], lead[ord(char)], sign[ord(char)] = code, abs(digit), -1 if digit < 0 else 1
@@ -342,67 +341,3 @@ def _y_checks(values: FloatArray, starts: IntArray, checked: BoolArray, lines: I
         (int(lines[checked][i]), f"the line starts with {again[i]:.15g} but the line before ends with "
          f"{before[i]:.15g} (Y-check)") for i in wrong
     ]  # fmt: skip
-
-
-def pack(abscissae: Sequence[str], ordinates: FloatArray, *, width: int) -> Iterator[str]:
-    """Write ordinates as the lines of a DIFDUP table.
-
-    Parameters
-    ----------
-    abscissae : sequence of str
-        The text of every abscissa, of which the first of each line is printed.
-    ordinates : ndarray, shape (points,)
-        Rounded to whole numbers; NaN becomes ``?``.
-    width : int
-        The longest line.
-
-    Yields
-    ------
-    str
-        Lines; each starts with the last ordinate of the line before as the Y-check, and a line with nothing but
-        that check closes the table.
-
-    Examples
-    --------
-    >>> list(pack(["1", "2", "3", "4"], np.array([1.0, 2.0, 3.0, 3.0]), width=80))
-    ['1AJT%', '4C']
-    """
-    whole = [None if np.isnan(y) else int(y) for y in np.rint(ordinates)]
-    n = len(whole)
-    words = [_packed(whole[i], whole[i - 1] if i else None) for i in range(n)]
-    i = 0
-    ends_in_difference = False
-    while i < n or ends_in_difference:
-        at = i - 1 if ends_in_difference else i
-        line = abscissae[at] + _packed(whole[at], None)
-        i = at + 1
-        ends_in_difference = False
-        while i < n:
-            run = 1
-            while i + run < n and words[i + run] == words[i] and words[i][0] in _DIFFERENCES:
-                run += 1
-            piece = words[i] + (_coded(run, _DUP_CODES) if run > 1 else "")
-            if len(line) + len(piece) > width:
-                break
-            line += piece
-            ends_in_difference = words[i][0] in _DIFFERENCES
-            i += run
-        yield line
-
-
-def _packed(value: int | None, before: int | None) -> str:
-    if value is None:
-        return "?"
-    return _coded(value, _SQZ_CODES) if before is None else _coded(value - before, _DIF_CODES)
-
-
-def _coded(value: int, codes: dict[str, str]) -> str:
-    """A whole number whose sign and first digit are one letter."""
-    digits = str(abs(value))
-    return codes[f"-{digits[0]}" if value < 0 else digits[0]] + digits[1:]
-
-
-_SQZ_CODES = {str(digit): char for char, digit in _SQZ_DIGITS.items()}
-_DIF_CODES = {str(digit): char for char, digit in _DIF_DIGITS.items()}
-_DUP_CODES = {str(digit): char for char, digit in _DUP_DIGITS.items()}
-_DIFFERENCES = frozenset(_DIF_DIGITS)
