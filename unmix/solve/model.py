@@ -63,6 +63,8 @@ class KnownModel:
         One of :data:`unmix.solve.passes.NOISE_MODELS`.
     scans : ndarray, shape (scans, channels), optional
         Repeated scans of one sample, from which level and correlation of the noise are taken.
+    relative_noise : ndarray, shape (channels,), optional
+        How the noise of one channel compares with that of others, where its level is not known.
     """
 
     def __init__(
@@ -76,6 +78,7 @@ class KnownModel:
         noise: Any,
         noise_model: str,
         scans: FloatArray | None = None,
+        relative_noise: FloatArray | None = None,
     ) -> None:
         self.pure = pure
         self.free = polynomial_terms(np.asarray(axis, dtype=float), baseline)
@@ -83,6 +86,7 @@ class KnownModel:
         self.level = level
         self.noise: FloatArray | None = None if noise is None else np.asarray(noise, dtype=float)
         self.noise_model = noise_model
+        self.relative_noise = relative_noise
         self.scans = None if scans is None else noise_of_scans(scans, self.free)
         if self.scans is not None:
             self.noise = np.asarray(self.scans.channel)
@@ -124,7 +128,9 @@ class KnownModel:
         settings = Settings(self.level, self.nonnegative, known_noise=self.noise is not None, scans=self.scans,
                             resolution=resolution)  # fmt: skip
         relative = np.broadcast_to(np.asarray(pure_uncertainty, dtype=float), (self.pure.shape[0],))
-        noise: FloatArray | float = 1.0 if self.noise is None else self.noise
+        noise: FloatArray | float = 1.0 if self.relative_noise is None else self.relative_noise
+        if self.noise is not None:
+            noise = self.noise
         if self.scans is not None:
             noise = self.scans.innovation
         return solve(y, counts, noise, self.pure.T, self.free, relative, settings,
