@@ -36,10 +36,14 @@ _UNEXPLAINED = 0.25
 _SLOW = 15.0
 _SLOWEST = 14.0
 
-#: where the air absorbs, cm-1, and up to which width that looks like it (from memory, after HITRAN: CO2 at 2349 and
-#: 667 as unresolved bands, water vapour as single narrow lines)
-_AIR = ((2280.0, 2390.0, 120.0, "Carbon dioxide"), (640.0, 700.0, 40.0, "Carbon dioxide"),
-        (1300.0, 2000.0, 14.0, "Water vapour"), (3500.0, 3950.0, 14.0, "Water vapour"))  # fmt: skip
+#: where the air absorbs, cm-1, up to which width that looks like it, and how many such bands it takes (from memory,
+#: after HITRAN: CO2 at 2349 and 667 as unresolved bands, water vapour as groups of narrow lines)
+_AIR = (
+    (2280.0, 2390.0, 120.0, 1, "Carbon dioxide"),
+    (660.0, 675.0, 20.0, 1, "Carbon dioxide"),
+    (1300.0, 2000.0, 14.0, 3, "Water vapour"),
+    (3500.0, 3950.0, 14.0, 3, "Water vapour"),
+)
 
 #: bands named in a reason; the rest are counted
 _NAMED_BANDS = 3
@@ -94,6 +98,7 @@ class Evidence:
     unbounded: FloatArray = field(default_factory=lambda: np.zeros(0))
     correlation_length: float = 1.0
     blank: bool = False
+    suggestion: str = ""
     lack_of_fit: float = 0.0
     spikes: int = 0
     negative_share: float = 0.0
@@ -200,13 +205,15 @@ def _misfit(evidence: Evidence, words: Words) -> list[tuple[int, str]]:
         place = (f"{plain_number(band.position, 5)} {unit}, about {plain_number(band.width, 2)} {unit} "
                  "wide,")
         if band.height > 0:
-            text = f"A band at {place} is not explained (z = {band.score:.0f}){harm}.{_air(band, unit)}"
+            text = f"A band at {place} is not explained (z = {band.score:.0f}){harm}.{_air(band, evidence.bands, unit)}"
         else:
             text = f"The fit puts in a band at {place} that the sample does not have (z = {band.score:.0f}){harm}."
         found.append((1, text))
     rest = len(evidence.bands) - _NAMED_BANDS
     if rest > 0:
         found.append((1, f"{rest} further bands are not explained."))
+    if found and evidence.suggestion:
+        found.append((0, f"Of the library, {evidence.suggestion} would explain most of it: a lead, not a proof."))
     if found and evidence.lack_of_fit > _UNEXPLAINED:
         found.append((2, f"The fit leaves {100 * evidence.lack_of_fit:.0f}% of the spectrum unexplained."))
     if found and evidence.harm.size:
@@ -217,13 +224,14 @@ def _misfit(evidence: Evidence, words: Words) -> list[tuple[int, str]]:
     return found
 
 
-def _air(band: Band, unit: str) -> str:
-    """A remark when an unexplained band lies where the air absorbs."""
+def _air(band: Band, bands: list[Band], unit: str) -> str:
+    """A remark when an unexplained band lies where the air absorbs; a lone narrow band is not taken for vapour."""
     if unit != "cm-1":
         return ""
-    for low, high, widest, what in _AIR:
-        if low <= band.position <= high and band.width <= widest:
-            return f" {what} of the air absorbs there."
+    for low, high, widest, fewest, what in _AIR:
+        alike = [one for one in bands if low <= one.position <= high and one.width <= widest]
+        if any(one is band for one in alike) and len(alike) >= fewest:
+            return f" {what} of the air absorbs there too."
     return ""
 
 

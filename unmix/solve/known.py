@@ -47,6 +47,7 @@ def quantify(
     noise_model: str | None = None,
     path_length: Any = None,
     method: "Method | None" = None,
+    library: Any = None,
     progress: Progress | None = None,
 ) -> xr.Dataset:
     """Find how much of each known component is in each sample, how sure, and whether something is missing.
@@ -80,6 +81,8 @@ def quantify(
     method : Method, optional
         Preparation that samples and pure spectra pass alike, once they are on common channels; every step must keep
         Beer-Lambert additivity. Settings that it holds take the place of the options above.
+    library : DataArray, dims (component, spectral), optional
+        Further pure spectra: where a band is not explained, the one that would explain most of it is named.
     progress : callable, optional
         Called with the number of spectra finished so far.
 
@@ -115,7 +118,8 @@ def quantify(
                "noise_model": noise_model, "path_length": path_length}  # fmt: skip
     if method is not None and method.solver:
         options |= method.settings_for("quantify", options)
-        return quantify(spectra, pure, method=type(method)(method.steps, method.name), progress=progress, **options)
+        return quantify(spectra, pure, method=type(method)(method.steps, method.name), library=library,
+                        progress=progress, **options)  # fmt: skip
     check_baseline(baseline)
     check_level(level)
     check_flag("nonnegative", nonnegative)
@@ -148,7 +152,7 @@ def quantify(
     solver = KnownModel(scale_to_path(known, paths), axis.values, baseline=baseline, nonnegative=nonnegative,
                         level=level, noise=kept if scans is None else None, noise_model=model, scans=scans,
                         relative_noise=None if gain is None else gain.sel({str(axis.name): axis}).values)  # fmt: skip
-    result = assemble(samples, known, solver, paths, progress)
+    result = assemble(samples, known, solver, paths, progress, None if library is None else _beside(library, samples))
     options |= {"noise": noise if scans is None else "repeated scans", "noise_model": model,
                 "method": "" if method is None else method.to_text()}  # fmt: skip
     return result.assign_attrs(
@@ -159,6 +163,14 @@ def quantify(
         notes=json.dumps(notes + json.loads(given.attrs.get("notes", "[]"))),
         **provenance("quantify", options, spectra=given, pure=pure),
     )
+
+
+def _beside(library: Any, samples: xr.DataArray) -> xr.DataArray:
+    """Library spectra on the channels of the samples; channels that they do not reach count as zero."""
+    spectra, _ = as_absorbance(as_pure(library, name="library"), name="library")
+    shared, on, _ = common_axis(samples, spectra)
+    dim = spectral_dim(samples)
+    return on.reindex({dim: samples[dim]}) if shared.sizes[dim] < samples.sizes[dim] else on
 
 
 def _prepared(

@@ -9,9 +9,10 @@ from unmix.diagnose.conditioning import design_figures
 from unmix.diagnose.residual import Bands
 from unmix.diagnose.verdict import Band, Evidence, Words, judge
 from unmix.errors import InputError, listed
-from unmix.kernels import FloatArray
+from unmix.kernels import BoolArray, FloatArray
 from unmix.solve.analysis import Progress
 from unmix.solve.answer import Answer
+from unmix.solve.hints import best_addition
 from unmix.solve.model import Solver
 from unmix.solve.paths import Paths
 from unmix.spectra import rows_of, spectral_dim
@@ -44,11 +45,10 @@ _AMOUNTS = {
 #: variables of the result whose names a coordinate must not have
 RESERVED = frozenset({
     *_AMOUNTS, "detected", "measured", "fitted", "residual", "baseline", "used", "noise_level",
-    "noise_correlation_length", "misfit_z", "misfit_limit", "stray_light",
-    "spikes", "channels_used", "channels_missing",
-    "channels_saturated", "effective_channels", "lack_of_fit", "path_factor", "verdict", "reason", "misfit_position",
-    "misfit_width", "misfit_height", "misfit_score", "pure_signal", "variance_inflation", "selectivity",
-    "confused_with", "condition_index", "component",
+    "noise_correlation_length", "misfit_z", "misfit_limit", "stray_light", "spikes", "channels_used",
+    "channels_missing", "channels_saturated", "effective_channels", "lack_of_fit", "path_factor", "verdict",
+    "reason", "suggestion", "misfit_position", "misfit_width", "misfit_height", "misfit_score", "pure_signal",
+    "variance_inflation", "selectivity", "confused_with", "condition_index", "component",
 })  # fmt: skip
 
 _FIGURES = {
@@ -67,6 +67,7 @@ def assemble(
     solver: Solver,
     paths: Paths,
     progress: Progress | None,
+    library: xr.DataArray | None = None,
 ) -> xr.Dataset:
     """Run the estimator on labelled samples and label the answer.
 
@@ -79,6 +80,8 @@ def assemble(
         With the pure spectra per unit path.
     paths : Paths
     progress : callable or None
+    library : DataArray, dims (component, spectral), optional
+        Spectra on the same channels, among which a missing component may be.
 
     Returns
     -------
@@ -111,8 +114,16 @@ def assemble(
         evidence.blank = bool(answer.blank[i])
         above_baseline = (rows[i] - answer.baseline[i])[answer.used[i]]
         evidence.negative_share = float(np.mean(above_baseline < -0.05)) if above_baseline.size else 0.0
+        if library is not None and evidence.bands:
+            evidence.suggestion = _suggestion(rows[i] - answer.fitted[i], answer.used[i], solver, library)
         judged.append((*judge(evidence, words), evidence))
     return _dataset(samples, pure, solver, paths, answer, judged)
+
+
+def _suggestion(residual: FloatArray, used: BoolArray, solver: Solver, library: xr.DataArray) -> str:
+    design = np.hstack([solver.free, np.nan_to_num(solver.pure.T)])
+    hint = best_addition(np.nan_to_num(residual), used, design, np.asarray(library.values, dtype=float))
+    return "" if hint is None else f"{library['component'].values[hint.index]} ({hint.share:.0%} of the residual)"
 
 
 def check_coordinates(samples: xr.DataArray) -> xr.DataArray:
@@ -248,6 +259,8 @@ def _dataset(
     data["path_factor"] = over(paths.factor, name="Path in units of the pure spectra's path")
     data["verdict"] = over([v for v, _, _ in judged], name="Verdict", units="")
     data["reason"] = over([r for _, r, _ in judged], name="Reason for the verdict", units="")
+    data["suggestion"] = over([e.suggestion for e in evidence], name="Spectrum of the library that would explain most",
+                              units="")  # fmt: skip
     data |= _band_table(evidence, over, SPECTRAL_UNITS[dim], signal_unit)
     data |= _design(pure, solver, dim, signal_unit, paths)
     coords = {name: c for name, c in samples.coords.items() if name != dim}
