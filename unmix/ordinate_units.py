@@ -74,8 +74,9 @@ _NAPIERIAN = 1 / np.log(10.0)
 _TEXTS: dict[str, OrdinateUnit] = {
     **dict.fromkeys(
         ["absorbance", "abs", "abs.", "absorbance units", "absorbance unit", "optical density", "od", "o.d.", "a",
-         "extinction", "absorb", "absorbence", "absorption (od)", "decadic absorbance", "log(1/t)", "log10(1/t)",
-         "-log(t)", "-log10(t)", "-log t", "-log10 t", "absorbance log(1/t)", "absorbance base 10"],
+         "extinction", "extinktion", "absorbanz", "absorb", "absorbence", "absorption (od)", "decadic absorbance",
+         "log(1/t)", "log10(1/t)", "-log(t)", "-log10(t)", "-log t", "-log10 t", "absorbance log(1/t)",
+         "absorbance base 10"],
         OrdinateUnit("absorbance"),
     ),
     **dict.fromkeys(

@@ -100,6 +100,7 @@ def test_failed_check_is_an_error_or_a_note_with_its_line(tmp_path, content, mes
 
 
 @pytest.mark.parametrize(("content", "message"), [
+    (text(YFACTOR="1e307", FIRSTY=None), "the ordinate at point 2 of 5 is too large for a number"),
     (text(XFACTOR="0"), "line 6: ##XFACTOR= is zero"),
     (text(YFACTOR="one"), "line 7: ##YFACTOR= is 'one'; it is a finite number"),
     (text(YFACTOR="0,1"), "line 7: ##YFACTOR= is '0,1'|line 7: ##YFACTOR= is zero"),
@@ -215,6 +216,19 @@ def test_pages(tmp_path):
     assert (first.dim, first.quantity) == ("wavelength", "transmittance")
     assert second.axis.tolist() == [400, 402, 404]
     assert third.values.tolist() == [[0.15, 0.25]]
+
+
+def test_pages_of_two_ordinates(tmp_path):
+    pages = NTUPLES.replace("SYMBOL=X,Y,T", "SYMBOL=X,R,I").replace("UNITS=NANOMETERS,%T,SECONDS", "UNITS=NM,A,A")
+    pages = pages.replace("FIRST=400,11,0", "FIRST=400,11,12").replace("VAR_DIM=4,4,2", "VAR_DIM=4,4,4")
+    pages = pages.replace("FACTOR=1,1,1", "FACTOR=1,0.1,0.1").replace("T=0", "N=1").replace("T=1", "N=2")
+    pages = pages.replace("(Y..Y)", "(R..R)", 1).replace("(Y..Y)", "(I..I)", 1).replace("(XY..XY)", "(XI..XI)")
+    several = found(tmp_path, pages.replace("FIRST=400,11,12", "FIRST=400,1.1,1.2"))
+    assert [one.values[0, 0] for one in several] == pytest.approx([1.1, 1.2, 1.5])
+    assert [one.notes for one in several] == [[], [], []]
+    for wrong in ("400,7.7,1.2", "400,1.1,7.7"):
+        with pytest.raises(ReadError, match=r"##FIRSTY= says 7.7 but the table has 1.\d"):
+            found(tmp_path, pages.replace("FIRST=400,11,12", f"FIRST={wrong}"))
 
 
 @pytest.mark.parametrize(("old", "new", "message"), [

@@ -120,6 +120,19 @@ def test_facts_above_columns_become_coordinates(tmp_path):
     assert spectrum.coords == {"time": [0, 10], "path_length": [1.0, 0.0025]}
 
 
+@pytest.mark.parametrize("content", [
+    "sample,a,b\npath (um),25,25\nnm,Abs,Abs\n400,0.1,0.2\n401,0.2,0.3\n",
+    "sample,a\npath length (um),25\nnm,Abs\n400,0.1\n401,0.2\n",
+    "Path length (um),25\nnm,Abs\n400,0.1\n401,0.2\n",
+    "Cell length: 25 um\nnm,Abs\n400,0.1\n401,0.2\n",
+    "# path: 25 um\nnm,Abs\n400,0.1\n401,0.2\n",
+])
+def test_path_lengths_are_found(tmp_path, content):
+    spectrum = one(tmp_path, content)
+    assert set(spectrum.coords["path_length"]) == {0.0025}
+    assert spectrum.dim == "wavelength"
+
+
 def test_path_lengths_without_unit_are_left_out(tmp_path):
     spectrum = one(tmp_path, "sample,a,b\nPath length,1,2\nnm,Abs,Abs\n400,0.1,0.2\n401,0.2,0.3\n")
     assert spectrum.coords == {}

@@ -7,6 +7,7 @@ from collections.abc import Sequence
 from pathlib import Path
 from typing import Any, Literal
 
+import numpy as np
 import xarray as xr
 
 from unmix.errors import InputError, ReadError
@@ -212,18 +213,24 @@ def read_file(path: Path, options: Options) -> list[Found | xr.DataArray]:
         When it cannot be read right.
     """
     try:
-        head = b"" if path.is_dir() else _head(path)
-        if is_store(path, head):
-            return [read_store(path, head, options)]
-        if head.startswith(b"PK\x03\x04"):
-            return [*read_workbook(path, options, file=path.name)]
-        if is_jcamp(head, file=path.name):
-            return [*read_jcamp(plain_lines(path.read_bytes(), file=path.name), options, file=path.name)]
-        return [*read_table(path, options, file=path.name)]
+        # What overflows becomes infinite and is refused in words, not by a warning of numpy
+        with np.errstate(all="ignore"):
+            return _by_content(path, options)
     except OSError as error:
         if isinstance(error, ReadError):
             raise
         raise ReadError(f"it cannot be opened ({error.strerror or error})", path=path.name) from error
+
+
+def _by_content(path: Path, options: Options) -> list[Found | xr.DataArray]:
+    head = b"" if path.is_dir() else _head(path)
+    if is_store(path, head):
+        return [read_store(path, head, options)]
+    if head.startswith(b"PK\x03\x04"):
+        return [*read_workbook(path, options, file=path.name)]
+    if is_jcamp(head, file=path.name):
+        return [*read_jcamp(plain_lines(path.read_bytes(), file=path.name), options, file=path.name)]
+    return [*read_table(path, options, file=path.name)]
 
 
 def _head(path: Path) -> bytes:

@@ -159,6 +159,20 @@ def ordinate_of(written: str, options: Options, findings: Findings) -> tuple[Ord
     return stated, written.strip()
 
 
+def refuse_infinite(values: FloatArray, findings: Findings) -> None:
+    """Refuse ordinates that became infinite by their factor or conversion.
+
+    Raises
+    ------
+    ReadError
+        When there are any.
+    """
+    infinite = np.flatnonzero(np.isinf(values).any(axis=0))
+    if infinite.size:
+        raise ReadError(f"the ordinate at point {infinite[0] + 1} of {values.shape[1]} is too large for a number",
+                        path=findings.file)  # fmt: skip
+
+
 def increasing(axis: FloatArray, values: FloatArray, findings: Findings) -> tuple[FloatArray, FloatArray, str]:
     """Axis and values in increasing order, and the direction in which the file ran.
 

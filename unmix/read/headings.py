@@ -1,5 +1,6 @@
 """Headings of table columns and metadata lines to names and units; nothing here knows where they stand."""
 
+import math
 import re
 from dataclasses import dataclass, field
 
@@ -34,6 +35,9 @@ class Metadata:
 
     def take(self, key: str, value: str) -> None:
         """Keep a pair if its key is known and nothing was said before."""
+        unit = path_heading(key)
+        if unit is not None:
+            key, value = "path", f"{value.strip()} {unit}".strip()
         word = re.sub(r"[^a-z]", "", key.lower())
         for name, words in _META.items():
             if word in words and value.strip() and not getattr(self, name):
@@ -59,6 +63,8 @@ def axis_heading(text: str) -> AxisUnit | None:
     ('nm', None)
     """
     text = text.strip()
+    if path_heading(text) is not None:
+        return None
     for attempt in (text, *(f"{head} ({tail})" for head, tail in _splits(text))):
         try:
             return axis_unit(attempt) if attempt else None
@@ -136,4 +142,5 @@ def axis_cell(text: str, decimal: str) -> tuple[float, str] | None:
             axis_unit(unit)
         except UnitError:
             return None
-    return float(match.group(1).replace(",", ".")), unit
+    position = float(match.group(1).replace(",", "."))
+    return (position, unit) if math.isfinite(position) else None

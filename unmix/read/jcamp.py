@@ -8,7 +8,7 @@ from dataclasses import dataclass
 from unmix.errors import ReadError, UnitError
 from unmix.ordinate_units import settle
 from unmix.read.blocks import TABLES, Block, Entry, split_blocks
-from unmix.read.found import Findings, Found, Options, axis_of, increasing, ordinate_of
+from unmix.read.found import Findings, Found, Options, axis_of, increasing, ordinate_of, refuse_infinite
 from unmix.read.jcamp_table import Budget, Header, Number, Table, number_of, read_table
 from unmix.read.ntuples import Page, pages
 from unmix.units import length_in_cm
@@ -132,6 +132,7 @@ def _found(
         values, notes = settle(values, unit, quantity)
         findings.notes += notes
         quantity, per = unit.quantity, per or unit.per
+    refuse_infinite(values, findings)
     facts = {
         "format": f"JCAMP-DX {block.text('JCAMPDX').split(' ')[0]}".strip(),
         "packing": table.forms,

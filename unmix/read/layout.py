@@ -4,6 +4,7 @@ Works on rows of cells, whether they came from a text file or a spreadsheet. Wha
 names the argument which settles it.
 """
 
+import math
 from collections.abc import Sequence
 from dataclasses import dataclass, field
 from itertools import pairwise
@@ -320,7 +321,6 @@ def label_row(headings: Sequence[Sequence[str]]) -> int | None:
 
 def _is_float(text: str) -> bool:
     try:
-        float(text.replace(",", "."))
+        return math.isfinite(float(text.replace(",", ".")))
     except ValueError:
         return False
-    return True

@@ -40,11 +40,14 @@ def pages(block: Block, findings: Findings) -> list[Page]:
     found: list[Page] = []
     name = ""
     own: list[Entry] = []
+    seen: set[str] = set()
     for entry in block.entries:
         if entry.label == "PAGE":
             name, own = entry.value, []
         elif entry.label == "DATATABLE":
-            found.append(_page(block, Block(entry.line, own), entry, name, symbols, findings, not found))
+            x, y = _variables(entry, symbols, findings)
+            found.append(_page(block, Block(entry.line, own), entry, name, symbols, (x, y), findings, y not in seen))
+            seen.add(y)
             own = []
         elif entry.label == "ENDNTUPLES":
             break
@@ -55,17 +58,22 @@ def pages(block: Block, findings: Findings) -> list[Page]:
     return found
 
 
-def _page(
-    block: Block, own: Block, table: Entry, name: str, symbols: list[str], findings: Findings, is_first: bool
-) -> Page:
+def _variables(table: Entry, symbols: list[str], findings: Findings) -> tuple[str, str]:
+    """The symbols of the abscissa and the ordinate of a table."""
     form = re.match(r"\(\s*(\w+?)\s*(?:\+\+\s*\(\s*(\w+)\s*\.\.|,?\s*(\w)\s*\.\.)", table.value)
     x, y = (form.group(1).upper(), (form.group(2) or form.group(3)).upper()) if form else ("", "")
-    if form and not form.group(2) and len(x) > 1:
-        x, y = x[0], x[1:]
     for symbol in (x, y):
         if symbol not in symbols:
             raise ReadError(f"the table '{table.value[:60]}' names no variables of ##SYMBOL=", path=findings.file,
                             line=table.line, accepted=f"the variables are {listed(symbols)}")  # fmt: skip
+    return x, y
+
+
+def _page(
+    block: Block, own: Block, table: Entry, name: str, symbols: list[str], variables: tuple[str, str],
+    findings: Findings, is_first: bool,
+) -> Page:  # fmt: skip
+    x, y = variables
 
     def given(label: str, symbol: str) -> Number | None:
         """A number of one variable: of the page where it repeats the label, else of the block."""
@@ -79,7 +87,7 @@ def _page(
     header = Header(
         first_x=given("FIRST", x), last_x=given("LAST", x), x_factor=given("FACTOR", x),
         y_factor=given("FACTOR", y), n_points=given("VARDIM", x),
-        # Only the first page is sure to be the one that the variable table describes
+        # The table of variables describes the first page of each
         first_y=given("FIRST", y) if is_first else None,
     )  # fmt: skip
     for label, field in (("NPOINTS", "n_points"), ("FIRSTX", "first_x"), ("LASTX", "last_x"), ("DELTAX", "delta_x"),

@@ -15,7 +15,7 @@ from unmix.errors import ReadError
 from unmix.kernels import FloatArray
 from unmix.read.columns import Naming, named_columns, named_pairs, named_rows
 from unmix.read.delimited import Dialect, Row, comments, sniff, table_lines
-from unmix.read.found import Findings, Found, Options, axis_of, increasing
+from unmix.read.found import Findings, Found, Options, axis_of, increasing, refuse_infinite
 from unmix.read.headings import take_line
 from unmix.read.layout import Layout, find_layout
 from unmix.read.text import encoding_of, lines_of
@@ -196,6 +196,7 @@ def _found(
     unit = axis_of(written, options, findings, line=layout.first_line)
     points, values, direction = increasing(unit.convert(axis), values, findings)
     values, notes = naming.settled(values)
+    refuse_infinite(values, findings)
     findings.notes += notes
     where = {"columns": "one spectrum a column", "rows": "one spectrum a row",
              "pairs": "each spectrum with an axis of its own"}[layout.orientation]  # fmt: skip
