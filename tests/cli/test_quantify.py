@@ -167,7 +167,7 @@ def test_a_path_length_in_one_file_does_not_stop_another_without(laboratory, unm
         (["samples", "--pure", "pure", "--regions", "x"], "--regions: 'x' is not a region"),
         (["samples", "--pure", "pure", "--baseline", "x"], "--baseline is 'x'"),
         (["samples/vat1.csv", "--pure", "pure", "--regions", "10-20"], "vat1.csv: regions: (10, 20) nm"),
-        (["samples"], "Missing option '--pure'"),
+        (["samples"], "the pure spectra are not clear; give --pure, or --standards together with --amounts"),
     ],
 )
 def test_bad_input_is_one_sentence_and_status_two(laboratory, unmix, arguments, text):

@@ -184,7 +184,7 @@ def _saturation(evidence: Evidence) -> list[tuple[int, str]]:
         if evidence.stray > 0:
             return [(1, f"Stray light, {100 * evidence.stray:.2g}% of the light, bends the strong bands; it was fitted "
                         "and taken off.")]  # fmt: skip
-        if evidence.growth > GROWING:
+        if evidence.growth > GROWING and not evidence.blank:
             return [(1, f"The residual is {evidence.growth:.2g} times larger where the sample absorbs strongly: the "
                         "straight line between amount and absorbance has an end there.")]  # fmt: skip
         return []
@@ -256,7 +256,7 @@ def _noise(evidence: Evidence) -> list[tuple[int, str]]:
         return [(1, "The spectrum is a straight line to the last digit, so nothing was measured and the noise is not "
                     "known.")]  # fmt: skip
     slow = evidence.channels_used / _SLOW
-    if evidence.correlation_length > max(slow, _SLOWEST):
+    if evidence.correlation_length > max(slow, _SLOWEST) and not evidence.blank:
         return [(1, f"The residual changes so slowly (over {evidence.correlation_length:.0f} of "
                     f"{evidence.channels_used} channels) that it can hardly be noise.")]  # fmt: skip
     if evidence.excess > 1.0:

@@ -117,7 +117,7 @@ def solve(
     answer = analyse(
         y, np.where(straight, weight, 0.0), signal, free, pure_uncertainty, settings, progress if quiet else None
     )
-    spikes = _spikes(y, straight, answer.fitted)
+    spikes = _spikes(y, straight, answer.fitted) & ~answer.blank[:, None]
     used, straight = used & ~spikes, straight & ~spikes
     for spiked in np.flatnonzero(spikes.any(axis=1)):
         row = np.where(straight[spiked], weight[spiked], 0.0)[None]
@@ -181,7 +181,7 @@ def _stray_of(i: int, y: FloatArray, used: BoolArray, columns: FloatArray, answe
     flat = np.isfinite(light.plateau[i])
     suspicious = answer.residual_growth[i] > GROWING or abs(answer.misfit_z[i]) > answer.misfit_limit[i]
     top = np.max(y[i], initial=0.0, where=np.isfinite(y[i]))
-    if not flat and not (suspicious and top > _DARK_ENOUGH):
+    if not flat and not (suspicious and top > _DARK_ENOUGH and not answer.blank[i]):
         return 0.0
     keep = used[i]
     low = keep & (np.nan_to_num(y[i], nan=np.inf) < _STRAIGHT)
