@@ -3,7 +3,7 @@
 from typing import NamedTuple
 
 import numpy as np
-from scipy import stats
+from scipy import special
 
 from unmix.kernels import FloatArray
 
@@ -20,8 +20,10 @@ class Interval(NamedTuple):
 
 def quantile(level: float, freedom: FloatArray) -> FloatArray:
     """Student's t quantile; normal where the degrees of freedom are infinite, NaN where there are none."""
+    freedom = np.asarray(freedom, dtype=float)
     with np.errstate(invalid="ignore"):
-        t = np.where(np.isinf(freedom), stats.norm.ppf(level), stats.t.ppf(level, np.maximum(freedom, 1e-9)))
+        student = special.stdtrit(np.where(freedom > 0, freedom, 1.0), level)
+    t: FloatArray = np.where(np.isinf(freedom), special.ndtri(level), student)
     return np.where(freedom > 0, t, np.nan)
 
 

@@ -1,7 +1,7 @@
 """Saturated channels: bands whose tops are flat because the detector sees no more light."""
 
 import numpy as np
-from scipy.ndimage import median_filter
+from numpy.lib.stride_tricks import sliding_window_view
 
 from unmix.kernels import BoolArray, FloatArray
 
@@ -52,7 +52,7 @@ def saturated(absorbance: FloatArray) -> tuple[BoolArray, FloatArray]:
         level = _plateau(filled[i], _FEWEST)
         if level is None:
             # noise on a plateau can hide it; a running median keeps wide flat tops and loses the spikes
-            level = _plateau(median_filter(filled[i], 5, mode="nearest"), 2 * _FEWEST)
+            level = _plateau(_running_median(filled[i]), 2 * _FEWEST)
         if level is not None:
             plateau[i] = level
     end = plateau - np.minimum(_MARGIN, 0.5 * plateau)
@@ -88,3 +88,10 @@ def _roughness(values: FloatArray) -> float:
     """Typical second difference, which bands leave small and noise does not."""
     return float(np.median(np.abs(np.diff(values, 2)))) if values.size > 2 else 0.0
 
+
+
+def _running_median(values: FloatArray) -> FloatArray:
+    """Median of five channels around each, the ends repeated."""
+    wide = np.pad(values, 2, mode="edge")
+    middle: FloatArray = np.median(sliding_window_view(wide, 5), axis=-1)
+    return middle

@@ -1,34 +1,13 @@
 """What errors of left-out standards say: the error of a prediction, outlying standards, bent lines."""
 
-from typing import NamedTuple
-
 import numpy as np
 from scipy import optimize, stats
 
+from unmix.diagnose.spread import ErrorModel
 from unmix.kernels import BoolArray, FloatArray
 
 #: chance that a good standard among all is called outlying
 _OUTLYING = 0.01
-
-
-class ErrorModel(NamedTuple):
-    """Standard deviation of an error as a function of the amount: sqrt(absolute^2 + (relative * amount)^2).
-
-    Attributes
-    ----------
-    absolute, relative : ndarray, shape (components,)
-    freedom : ndarray, shape (components,)
-        Degrees of freedom: standards that hold the component, less the two parameters.
-    """
-
-    absolute: FloatArray
-    relative: FloatArray
-    freedom: FloatArray
-
-    def at(self, amount: FloatArray) -> FloatArray:
-        """Standard uncertainty at amounts, (..., components)."""
-        size: FloatArray = np.sqrt(self.absolute**2 + (self.relative * amount) ** 2)
-        return size
 
 
 def error_model(found: list[FloatArray], amounts: FloatArray) -> ErrorModel:

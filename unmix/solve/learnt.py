@@ -20,7 +20,7 @@ from unmix.diagnose.residual import (
     unexplained_bands,
 )
 from unmix.diagnose.saturation import saturated
-from unmix.diagnose.standards import ErrorModel
+from unmix.diagnose.spread import ErrorModel
 from unmix.errors import InputError
 from unmix.kernels import BoolArray, FloatArray, IntArray
 from unmix.kernels.gls import CHUNK, GlsFit, fit, make_design

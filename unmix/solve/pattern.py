@@ -1,7 +1,7 @@
 """All spectra that share one pattern of channel weights: design, fit, misfit test and what they do to the amounts."""
 
 import numpy as np
-from scipy.signal import lfilter
+from scipy.linalg import solve_banded
 
 from unmix.diagnose.limits import interval, limits, quantile
 from unmix.diagnose.residual import (
@@ -251,7 +251,7 @@ def _harm(solved: GlsFit, shared: _Strided, bands: list[Bands | None], f: int) -
         factor = solved.factor[min(i, solved.factor.shape[0] - 1), f:]
         reader = factor @ filters.transpose(solved.basis[min(i, solved.basis.shape[0] - 1)][None])[0]
         size = 2 * solved.residual.shape[1]
-        rest = lfilter([1.0], solved.filter[i], solved.residual[i])
+        rest = _unfiltered(solved.residual[i], solved.filter[i])
         rest = np.divide(rest, shared.design.weight, out=np.zeros_like(rest), where=shared.design.used)
         power = np.abs(np.fft.rfft(rest, n=size)) ** 2 / max(shared.design.freedom, 1)
         gain = np.abs(np.fft.rfft(np.where(np.isfinite(reader), reader, 0.0), n=size, axis=1)) ** 2
@@ -265,3 +265,10 @@ def _finite(shift: FloatArray) -> FloatArray:
     """Shifts of amounts, zero for a component that the design does not determine: its interval is infinite anyway."""
     known: FloatArray = np.nan_to_num(shift, posinf=0.0, neginf=0.0)
     return known
+
+
+def _unfiltered(residual: FloatArray, coefficients: FloatArray) -> FloatArray:
+    """The residual before the whitening filter: the recursion that undoes it, as a banded triangular system."""
+    bands = np.repeat(coefficients[:, None], residual.size, axis=1)
+    before: FloatArray = solve_banded((coefficients.size - 1, 0), bands, residual)
+    return before
