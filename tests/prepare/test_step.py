@@ -138,7 +138,7 @@ def test_additivity_with_missing_channels_is_as_declared(examples, make_rows):
         mixed = 0.6 * one + 1.7 * two
         step.fit(np.concatenate([one, two]))
         added = 0.6 * step.transform(one) + 1.7 * step.transform(two)
-        mixed[:, 4:6] = mixed[:, 60:66] = np.nan
+        mixed[:, [4, 5, 60, 61, 62, 90, 91]] = np.nan
         prepared = step.transform(mixed)
         kept = np.isfinite(prepared)
         same = np.allclose(prepared[kept], added[kept], atol=1e-9 * np.nanmax(np.abs(added)))

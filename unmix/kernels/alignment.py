@@ -9,7 +9,9 @@ from scipy.interpolate import CubicSpline
 
 from unmix.kernels import BoolArray, FloatArray
 
-_ITERATIONS = 30
+_ITERATIONS = 40
+#: a step below this part of a channel is the last
+_SETTLED = 1e-4
 _BLOCK = 256
 
 
@@ -32,7 +34,7 @@ def fit_moves(
         Shift and stretch; positive when the spectrum lies at higher positions than the reference. NaN for a
         spectrum without a band.
     settled : ndarray of bool, shape (n,)
-        Whether the last step was below a thousandth of a channel.
+        Whether the last step was below a ten-thousandth of a channel.
 
     Notes
     -----
@@ -62,8 +64,9 @@ def _fit_block(
         tried = np.clip(moves + damping * step, -bounds, bounds)
         new_cost, new_step, _ = _step(y, axis, spline, tried, bounds)
         better = new_cost <= cost
-        settled |= (np.abs(tried - moves) < 1e-3 * spacing).all(axis=1)
+        small = (np.abs(tried - moves) < _SETTLED * spacing).all(axis=1)
         take = better & ~settled
+        settled |= small
         moves[take], cost[take], step[take] = tried[take], new_cost[take], new_step[take]
         damping = np.where(take[:, None], 1.0, damping / 2)
         if settled.all():

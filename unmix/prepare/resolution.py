@@ -10,7 +10,7 @@ import numpy as np
 
 from unmix.errors import AxisError, InputError
 from unmix.kernels import FloatArray
-from unmix.kernels.resample import broadening_weights, interpolate
+from unmix.kernels.resample import broadening_weights, holes, interpolate
 from unmix.kernels.stencil import weighted_sums
 from unmix.prepare.accept import Rule, choice, number, spectrum
 from unmix.prepare.step import Step
@@ -94,7 +94,7 @@ class Resample(Step):
             raise InputError(f"Resample: resolution is {self.resolution:g}, not coarser than from_resolution "
                              f"{self.from_resolution:g}", accepted="a spectrum cannot be sharpened")  # fmt: skip
         width = float(np.sqrt(self.resolution**2 - self.from_resolution**2))
-        spacing = np.diff(self.axis_).max() if self.axis_.size > 1 else np.inf
+        spacing = np.diff(self.axis_)[~holes(self.axis_)].max() if self.axis_.size > 1 else np.inf
         if width < spacing:
             raise AxisError(f"Resample: the line shape to broaden with is {width:g} wide, narrower than the channel "
                             f"spacing of {spacing:g} on {self.axis_.size} feature(s)",

@@ -145,13 +145,13 @@ class Step(OneToOneFeatureMixin, TransformerMixin, BaseEstimator, ABC):
     # -- labels off, labels on ----------------------------------------------------------------------------------
 
     def _plain(self, X: Any, *, reset: bool) -> FloatArray:
-        shape = np.shape(X)
         # scikit-learn counts channels along the second dimension
-        flat = np.reshape(X, (-1, shape[-1])) if len(shape) > 2 else X
+        shape = X.shape if getattr(X, "ndim", 2) > 2 else None
+        flat = X if shape is None else np.reshape(X, (-1, shape[-1]))
         values: FloatArray = validate_data(
             self, flat, reset=reset, dtype=[np.float64, np.float32], ensure_all_finite="allow-nan"
         )
-        return values.reshape(shape) if len(shape) > 2 else values
+        return values if shape is None else values.reshape(shape)
 
     def _through(self, X: Any, work: Callable[[FloatArray], FloatArray], *, mark: bool = True) -> Any:
         if not isinstance(X, xr.DataArray):
