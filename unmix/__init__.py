@@ -10,10 +10,13 @@ from types import ModuleType
 from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
+    from unmix.archive import load, save
     from unmix.read import read, write
     from unmix.report.page import report
+    from unmix.solve.calibration import calibrate
     from unmix.solve.design import conditioning
     from unmix.solve.known import quantify
+    from unmix.solve.prediction import predict
     from unmix.solve.standards import learn_pure
 
 #: public name -> the module that holds it
@@ -23,6 +26,10 @@ _HOMES = {
     "quantify": "unmix.solve.known",
     "conditioning": "unmix.solve.design",
     "learn_pure": "unmix.solve.standards",
+    "calibrate": "unmix.solve.calibration",
+    "predict": "unmix.solve.prediction",
+    "save": "unmix.archive",
+    "load": "unmix.archive",
     "report": "unmix.report.page",
 }
 
@@ -31,7 +38,18 @@ try:
 except PackageNotFoundError:  # a source tree that was never installed
     __version__ = "0+unknown"
 
-__all__ = ["conditioning", "learn_pure", "quantify", "read", "report", "write"]
+__all__ = [
+    "calibrate",
+    "conditioning",
+    "learn_pure",
+    "load",
+    "predict",
+    "quantify",
+    "read",
+    "report",
+    "save",
+    "write",
+]
 
 
 def __getattr__(name: str) -> Any:

@@ -8,7 +8,7 @@ from dataclasses import dataclass
 import numpy as np
 from scipy import stats
 
-from unmix.kernels import FloatArray
+from unmix.kernels import FloatArray, IntArray
 
 #: a part of the range counts as thin when it holds less than this share of its fair number of samples
 _THIN = 0.25
@@ -129,7 +129,7 @@ def _line(y: FloatArray, f: FloatArray) -> tuple[float, float, float]:
     return slope, intercept, float(stats.f.sf(max(gained, 0.0) / 2 / (left / (n - 2)), 2, n - 2))
 
 
-def one_standard_error(errors: FloatArray, units: FloatArray | None = None) -> tuple[int, FloatArray]:
+def one_standard_error(errors: FloatArray, units: IntArray | None = None) -> tuple[int, FloatArray]:
     """The smallest number of latent variables within one standard error of the best.
 
     Parameters

@@ -50,13 +50,21 @@ def jackknife_plus(
     lower, upper = np.full(samples, -np.inf), np.full(samples, np.inf)
     if k < 1:
         return lower, upper
-    block = max(1, 2_000_000 // n)
+    of, far = _candidates(errors, model_of, k)
+    block = max(1, 100_000 // far.size)
     for start in range(0, samples, block):
         part = slice(start, start + block)
-        centre = predictions[part][:, model_of]
-        lower[part] = np.partition(centre - errors, k - 1, axis=1)[:, k - 1]
-        upper[part] = np.partition(centre + errors, n - k, axis=1)[:, n - k]
+        centre = predictions[part][:, of]
+        lower[part] = np.partition(centre - far, k - 1, axis=1)[:, k - 1]
+        upper[part] = -np.partition(-centre - far, k - 1, axis=1)[:, k - 1]
     return lower, upper
+
+
+def _candidates(errors: FloatArray, model_of: IntArray, k: int) -> tuple[IntArray, FloatArray]:
+    """The k largest errors of every model: the others cannot be among the k outermost ends."""
+    order = np.argsort(-errors, kind="stable")
+    kept = np.concatenate([order[model_of[order] == model][:k] for model in np.unique(model_of)])
+    return model_of[kept], errors[kept]
 
 
 def samples_for(level: float) -> int:

@@ -8,11 +8,12 @@ from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
     from unmix.solve.estimator import KnownSpectra
+    from unmix.solve.latent import PLSCalibration
 
 #: estimator -> the module that holds it
-_HOMES = {"KnownSpectra": "unmix.solve.estimator"}
+_HOMES = {"KnownSpectra": "unmix.solve.estimator", "PLSCalibration": "unmix.solve.latent"}
 
-__all__ = ["KnownSpectra"]
+__all__ = ["KnownSpectra", "PLSCalibration"]
 
 
 def __getattr__(name: str) -> Any:
