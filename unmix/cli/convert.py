@@ -19,7 +19,7 @@ Example:
 
 def command(
     files: Annotated[
-        list[str], typer.Argument(metavar="FILES...", help="Spectrum files, folders or patterns such as 'runs/*.jdx'.")
+        list[str], typer.Argument(metavar="FILES", help="Spectrum files, folders or patterns such as 'runs/*.jdx'.")
     ],
     to: Annotated[
         Path | None, typer.Option("--to", metavar="FILE", help="Write all spectra into one file; its suffix says how.")

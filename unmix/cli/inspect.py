@@ -25,7 +25,7 @@ Example:
 
 def command(
     files: Annotated[
-        list[str], typer.Argument(metavar="FILES...", help="Spectrum files, folders or patterns such as 'runs/*.jdx'.")
+        list[str], typer.Argument(metavar="FILES", help="Spectrum files, folders or patterns such as 'runs/*.jdx'.")
     ],
     verbose: Annotated[bool, typer.Option("--verbose", "-v", help="Show everything found in each file.")] = False,
     unit: options.Unit = None,

@@ -9,6 +9,7 @@ from contextlib import contextmanager
 from pathlib import Path
 from typing import Any
 
+import h5py
 import numpy as np
 import xarray as xr
 
@@ -76,9 +77,15 @@ def read_store(path: Path, head: bytes, options: Options) -> xr.DataArray:
 @contextmanager
 def _opened(path: Path, head: bytes, chunks: Any) -> Iterator[xr.Dataset]:
     """A dataset that is closed again unless it is read in chunks."""
-    kind: dict[str, Any] = {"engine": "scipy"} if head.startswith(b"CDF") else {"engine": "h5netcdf"}
+    kind: dict[str, Any] = {"engine": "h5netcdf"}
     if path.is_dir():
         kind = {"engine": "zarr", "consolidated": False}
+    elif head.startswith(b"CDF"):
+        kind = {"engine": "scipy"}
+    else:
+        # h5netcdf prints a traceback of its own when a file in which it could not read this is cleared away
+        with h5py.File(path, "r") as file:
+            file.attrs.get("_nc3_strict")
     dataset = xr.open_dataset(path, chunks=chunks, **kind)
     keep = False
     try:
