@@ -117,7 +117,8 @@ def solve(
     answer = analyse(
         y, np.where(straight, weight, 0.0), signal, free, pure_uncertainty, settings, progress if quiet else None
     )
-    spikes = _spikes(y, straight, answer.fitted) & ~answer.blank[:, None]
+    even = weight * 10.0 ** (-growth * np.clip(np.nan_to_num(answer.fitted), 0.0, 6.0))
+    spikes = _spikes(y, straight, answer.fitted, even) & ~answer.blank[:, None]
     used, straight = used & ~spikes, straight & ~spikes
     for spiked in np.flatnonzero(spikes.any(axis=1)):
         row = np.where(straight[spiked], weight[spiked], 0.0)[None]
@@ -195,9 +196,12 @@ def _stray_of(i: int, y: FloatArray, used: BoolArray, columns: FloatArray, answe
     return first if flat else 0.0
 
 
-def _spikes(y: FloatArray, used: BoolArray, fitted: FloatArray) -> BoolArray:
-    """Single channels far from the fit between two that are near it: no band is that narrow."""
-    rest = np.where(used & np.isfinite(fitted), np.nan_to_num(y) - np.nan_to_num(fitted), 0.0)
+def _spikes(y: FloatArray, used: BoolArray, fitted: FloatArray, even: FloatArray) -> BoolArray:
+    """Single channels far from the fit between two that are near it: no band is that narrow.
+
+    ``even`` is what makes the noise of all channels alike.
+    """
+    rest = np.where(used & np.isfinite(fitted), (np.nan_to_num(y) - np.nan_to_num(fitted)) * even, 0.0)
     found = np.zeros(y.shape, dtype=bool)
     if y.shape[1] < _FEWEST_CHANNELS:
         return found

@@ -248,7 +248,7 @@ def _harm(solved: GlsFit, shared: _Strided, bands: list[Bands | None], f: int) -
         shift = _finite(found.shift[:, f:])
         harm[i] = np.maximum(np.abs(shift.sum(axis=0)), np.abs(shift).max(axis=0))
         filters = FilterPair(solved.filter[i : i + 1], shared.design.weight)
-        factor = solved.factor[min(i, solved.factor.shape[0] - 1), f:]
+        factor = _finite(solved.factor[min(i, solved.factor.shape[0] - 1), f:])
         reader = factor @ filters.transpose(solved.basis[min(i, solved.basis.shape[0] - 1)][None])[0]
         size = 2 * solved.residual.shape[1]
         rest = _unfiltered(solved.residual[i], solved.filter[i])

@@ -57,7 +57,7 @@ _FIGURES = {
     "misfit_z": ("Largest score of an unexplained band", "1"),
     "spikes": ("Isolated spikes, left out", "channels"),
     "stray_light": ("Stray light, as a share of the light", "1"),
-    "misfit_limit": ("Limit of the score, one false alarm in a hundred spectra", "1"),
+    "misfit_limit": ("Limit of the score, at most one false alarm in a hundred spectra", "1"),
 }
 
 
