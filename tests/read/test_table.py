@@ -58,12 +58,15 @@ def test_one_spectrum_written_in_many_ways(tmp_path, content):
     assert (spectrum.dim, spectrum.quantity) == ("wavelength", "absorbance")
 
 
-@pytest.mark.parametrize("content", [
-    "400 0.1\n401 0.2\n402 0.3\n",
-    "400,0.1,\n401,0.2,\n402,0.3,\n",
-    "402,0.3\n401,0.2\n400,0.1\n",
-    "Wavelength,x\n400,0.1\n401,0.2\n402,0.3\n",
-])
+@pytest.mark.parametrize(
+    "content",
+    [
+        "400 0.1\n401 0.2\n402 0.3\n",
+        "400,0.1,\n401,0.2,\n402,0.3,\n",
+        "402,0.3\n401,0.2\n400,0.1\n",
+        "Wavelength,x\n400,0.1\n401,0.2\n402,0.3\n",
+    ],
+)
 def test_arguments_say_what_a_table_does_not(tmp_path, content):
     spectrum = one(tmp_path, content, unit="nm", quantity="absorbance")
     assert spectrum.axis.tolist() == [400, 401, 402]
@@ -120,13 +123,16 @@ def test_facts_above_columns_become_coordinates(tmp_path):
     assert spectrum.coords == {"time": [0, 10], "path_length": [1.0, 0.0025]}
 
 
-@pytest.mark.parametrize("content", [
-    "sample,a,b\npath (um),25,25\nnm,Abs,Abs\n400,0.1,0.2\n401,0.2,0.3\n",
-    "sample,a\npath length (um),25\nnm,Abs\n400,0.1\n401,0.2\n",
-    "Path length (um),25\nnm,Abs\n400,0.1\n401,0.2\n",
-    "Cell length: 25 um\nnm,Abs\n400,0.1\n401,0.2\n",
-    "# path: 25 um\nnm,Abs\n400,0.1\n401,0.2\n",
-])
+@pytest.mark.parametrize(
+    "content",
+    [
+        "sample,a,b\npath (um),25,25\nnm,Abs,Abs\n400,0.1,0.2\n401,0.2,0.3\n",
+        "sample,a\npath length (um),25\nnm,Abs\n400,0.1\n401,0.2\n",
+        "Path length (um),25\nnm,Abs\n400,0.1\n401,0.2\n",
+        "Cell length: 25 um\nnm,Abs\n400,0.1\n401,0.2\n",
+        "# path: 25 um\nnm,Abs\n400,0.1\n401,0.2\n",
+    ],
+)
 def test_path_lengths_are_found(tmp_path, content):
     spectrum = one(tmp_path, content)
     assert set(spectrum.coords["path_length"]) == {0.0025}
