@@ -89,8 +89,8 @@ def nnls_reduced(r: FloatArray, z: FloatArray) -> FloatArray:
         x = _back_substitute(r, unit)
         passive = x > 0
         np.maximum(x, 0.0, out=x)
-    todo: IntArray = np.flatnonzero(~passive.all(axis=1) & unit.any(axis=1))
-    stuck = _active_sets(r, unit, x, passive, todo)
+    waiting: IntArray = np.flatnonzero(~passive.all(axis=1) & unit.any(axis=1))
+    stuck = _active_sets(r, unit, x, passive, waiting)
     for row in stuck:
         try:
             x[row] = one_by_one(r, unit[row])[0]
@@ -101,24 +101,24 @@ def nnls_reduced(r: FloatArray, z: FloatArray) -> FloatArray:
 
 
 def _active_sets(
-    r: FloatArray, z: FloatArray, x: FloatArray, passive: BoolArray, todo: IntArray
+    r: FloatArray, z: FloatArray, x: FloatArray, passive: BoolArray, waiting: IntArray
 ) -> IntArray:
-    """Run the active sets of the rows in ``todo`` to their optimum, in place; returns the rows left over."""
+    """Run the active sets of the rows in ``waiting`` to their optimum, in place; returns the rows left over."""
     k = r.shape[1]
     barred = np.zeros_like(passive)  # entries that came back non-positive when they were freed
     fresh = np.full(x.shape[0], -1)  # the entry that was freed last
     for _ in range(10 * k + 10):
-        if todo.size == 0:
+        if waiting.size == 0:
             break
-        _inner(r, z, x, passive, todo, fresh, barred)
-        gradient = (z[todo] - x[todo] @ r.T) @ r
-        gradient[passive[todo] | barred[todo]] = -np.inf
+        _inner(r, z, x, passive, waiting, fresh, barred)
+        gradient = (z[waiting] - x[waiting] @ r.T) @ r
+        gradient[passive[waiting] | barred[waiting]] = -np.inf
         best = gradient.argmax(axis=1)
-        open_ = gradient[np.arange(todo.size), best] > _FLAT
-        todo = todo[open_]
-        fresh[todo] = best[open_]
-        passive[todo, best[open_]] = True
-    return todo
+        open_ = gradient[np.arange(waiting.size), best] > _FLAT
+        waiting = waiting[open_]
+        fresh[waiting] = best[open_]
+        passive[waiting, best[open_]] = True
+    return waiting
 
 
 def _inner(
