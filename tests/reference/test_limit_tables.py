@@ -9,7 +9,7 @@ import numpy as np
 import pytest
 from scipy import stats
 
-from unmix.diagnose.outliers import distance_limit, residual_limit
+from unmix.diagnose.outliers import distance_limit, residual_limit, traces
 
 
 @pytest.mark.parametrize(
@@ -23,7 +23,7 @@ from unmix.diagnose.outliers import distance_limit, residual_limit
     ],
 )
 def test_limit_of_the_residual(eigenvalues, level, expected):
-    assert residual_limit(np.array(eigenvalues, dtype=float), level) == pytest.approx(expected, rel=2e-9)
+    assert residual_limit(traces(np.array(eigenvalues)), level) == pytest.approx(expected, rel=2e-9)
 
 
 @pytest.mark.parametrize(
@@ -45,11 +45,11 @@ def test_where_the_power_is_not_positive_the_limit_is_that_of_box():
     eigenvalues = np.array([10.0, *[1.0] * 60])
     one, two, three = (np.sum(eigenvalues**k) for k in (1, 2, 3))
     assert 1 - 2 * one * three / (3 * two**2) < 0
-    assert residual_limit(eigenvalues, 0.95) == pytest.approx(two / one * stats.chi2.ppf(0.95, one**2 / two))
+    assert residual_limit(traces(eigenvalues), 0.95) == pytest.approx(two / one * stats.chi2.ppf(0.95, one**2 / two))
 
 
 def test_nothing_left_has_the_limit_zero():
-    assert residual_limit(np.zeros(4), 0.95) == 0.0
+    assert residual_limit(traces(np.zeros(4)), 0.95) == 0.0
 
 
 def test_as_many_samples_as_latent_variables_have_no_limit():

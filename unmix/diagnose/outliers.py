@@ -1,6 +1,6 @@
 """Is this sample like the calibration: residual and distance of its spectrum, their limits, and the channels at fault.
 
-Functions of scores, residuals and eigenvalues; the model that they come from is known to ``solve``.
+Functions of scores and residuals; the model that they come from is known to ``solve``.
 """
 
 import numpy as np
@@ -12,21 +12,66 @@ from unmix.kernels import FloatArray
 _EDGE = 0.25
 
 
-def residual_limit(eigenvalues: FloatArray, level: float) -> float:
-    """Limit of the squared length of a residual whose covariance has these eigenvalues.
+def traces(eigenvalues: FloatArray) -> tuple[float, float, float]:
+    """Sums of the first, second and third powers of the eigenvalues of a covariance."""
+    values = np.asarray(eigenvalues, dtype=float)
+    return float(values.sum()), float(np.sum(values**2)), float(np.sum(values**3))
+
+
+def estimated_traces(residuals: FloatArray) -> tuple[float, float, float]:
+    """Traces of the first three powers of the covariance that residuals of few samples were drawn from.
 
     Parameters
     ----------
-    eigenvalues : ndarray
-        Of the covariance of the residuals (divisor n - 1), zeros allowed.
+    residuals : ndarray, shape (samples, channels)
+        Of spectra that the model was not fitted to, expected to be zero.
+
+    Returns
+    -------
+    one, two, three : float
+
+    Notes
+    -----
+    Eigenvalues of the covariance of n samples spread more than the true ones, so that their powers are too large: with
+    S the sample covariance of normal residuals, E tr S^2 = (1 + 1/n) tr C^2 + (tr C)^2 / n. These and the third moments
+    of the Wishart distribution are solved for the traces of C, and the answer is kept within tr(C)^2 / p <= tr C^2 and
+    (tr C^2)^2 <= tr C tr C^3 <= tr C (tr C^2)^(3/2), which hold for every covariance.
+
+    References
+    ----------
+    Letac and Massam, Scand. J. Stat. 31 (2004) 295, for the moments.
+    """
+    n, p = residuals.shape
+    s1, s2, s3 = traces(np.linalg.svd(residuals, compute_uv=False) ** 2 / max(n, 1))
+    if s1 <= 0:
+        return 0.0, 0.0, 0.0
+    u = 1.0 / n
+    # products of traces in the order: (tr C^2, (tr C)^2) and (tr C^3, tr C tr C^2, (tr C)^3)
+    two = np.linalg.solve([[1 + u, u], [2 * u, 1.0]], [s2, s1**2])[0]
+    third = [[1 + 3 * u + 4 * u**2, 3 * u + 3 * u**2, u**2],
+             [4 * u + 4 * u**2, 1 + u + 4 * u**2, u],
+             [8 * u**2, 6 * u, 1.0]]  # fmt: skip
+    three = np.linalg.solve(third, [s3, s1 * s2, s1**3])[0]
+    two = float(np.clip(two, s1**2 / p, s2))
+    return s1, two, float(np.clip(three, two**2 / s1, two**1.5))
+
+
+def residual_limit(powers: tuple[float, float, float], level: float) -> float:
+    """Limit of the squared length of a residual (Q).
+
+    Parameters
+    ----------
+    powers : (float, float, float)
+        Traces of the first three powers of the covariance of the residuals, from :func:`traces` or
+        :func:`estimated_traces`.
     level : float
         Part of samples like the calibration that stays below.
 
     Returns
     -------
     float
-        By Jackson and Mudholkar; where their power h0 is not positive, by the two-moment form of Box. Zero when all
-        eigenvalues are.
+        By Jackson and Mudholkar; where their power h0 is not positive, by the two-moment form of Box. Zero when there
+        are no residuals.
 
     References
     ----------
@@ -34,10 +79,10 @@ def residual_limit(eigenvalues: FloatArray, level: float) -> float:
 
     Examples
     --------
-    >>> round(residual_limit(np.array([3.0, 2.0, 1.0]), 0.95), 6)
+    >>> round(residual_limit(traces(np.array([3.0, 2.0, 1.0])), 0.95), 6)
     16.55755
     """
-    one, two, three = (float(np.sum(np.asarray(eigenvalues, dtype=float) ** k)) for k in (1, 2, 3))
+    one, two, three = powers
     if one <= 0 or two <= 0:
         return 0.0
     power = 1.0 - 2.0 * one * three / (3.0 * two**2)

@@ -7,7 +7,7 @@ import numpy as np
 import xarray as xr
 
 from unmix.diagnose.calibration import Figures, figures
-from unmix.diagnose.outliers import distance_limit, nearest, residual_limit
+from unmix.diagnose.outliers import distance_limit, estimated_traces, nearest, residual_limit
 from unmix.errors import listed
 from unmix.kernels import BoolArray, FloatArray
 from unmix.solve.calibration_verdict import Evidence, judge
@@ -66,10 +66,9 @@ def assemble(
     n, k = guarded.scores.shape
     held = left.model_of >= 0
     spectral = left.residuals[held]
-    eigenvalues = np.linalg.svd(spectral, compute_uv=False) ** 2 / max(held.sum(), 1)
     near = nearest(guarded.scores / np.sqrt(model.score_variance), guarded.scores / np.sqrt(model.score_variance),
                    itself=True)  # fmt: skip
-    limits = _Limits(residual_limit(eigenvalues, level), distance_limit(k, n, level), float(near.max()))
+    limits = _Limits(residual_limit(estimated_traces(spectral), level), distance_limit(k, n, level), float(near.max()))
     predicted = choice.predicted[:, choice.components]
     left_out = predicted.mean(axis=0)
     q = np.sum(left.residuals**2, axis=1)
