@@ -110,6 +110,7 @@ def correlate(x: FloatArray, t: Templates) -> FloatArray:
     Parameters
     ----------
     x : ndarray, shape (..., channels)
+    t : Templates
 
     Returns
     -------

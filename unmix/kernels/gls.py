@@ -104,6 +104,7 @@ def independent_stride(y: FloatArray, design: Design) -> IntArray:
     ----------
     y : ndarray, shape (spectra, channels)
         Weighed as the design; zero on unused channels.
+    design : Design
     """
     power = block_power(_ordinary_residual(y, design), design.used)
     return np.ones(y.shape[0], dtype=int) if power is None else interpolation_stride(power)
