@@ -21,6 +21,8 @@ COMMANDS = {
     "convert": "Write spectra as JCAMP-DX, CSV or netCDF",
     "quantify": "How much of each known component is in each sample, and how sure",
     "conditioning": "What a set of pure spectra allows, before anything is measured",
+    "calibrate": "From spectra with reference values to a proven calibration",
+    "predict": "Values of new spectra from a calibration, each one guarded",
     "demo": "List the demonstration data sets, or run one",
 }
 

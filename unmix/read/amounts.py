@@ -33,20 +33,11 @@ def read_amounts(path: str | Path) -> pd.DataFrame:
         columns are in different units.
     """
     path = Path(path)
-    if not path.is_file():
-        raise ReadError("there is no such file", path=str(path))
-    table = _workbook(path) if path.suffix.lower() in _WORKBOOKS else _text(path)
-    if table.shape[1] < 2 or table.empty:
-        raise ReadError(f"the table has {table.shape[1]} columns and {len(table)} rows", path=path.name,
-                        accepted="give names in the first column and amounts in the others")  # fmt: skip
-    names = [str(name).strip() for name in table.iloc[:, 0]]
-    double = sorted({name for name in names if names.count(name) > 1})
-    if double:
-        raise ReadError(f"sample {listed(double)} has more than one row", path=path.name, accepted="give each one row")
+    table, names = table_cells(path)
     columns = {}
     units = set()
     for header in table.columns[1:]:
-        name, unit = _split(str(header))
+        name, unit = split_unit(str(header))
         units.add(unit)
         columns[name] = _numbers(table[header], names, name, path)
     if len(units) > 1:
@@ -57,6 +48,27 @@ def read_amounts(path: str | Path) -> pd.DataFrame:
     if unit:
         found.attrs["units"] = unit
     return found
+
+
+def table_cells(path: Path) -> tuple[pd.DataFrame, list[str]]:
+    """The cells of a table as text, and the names in its first column.
+
+    Raises
+    ------
+    ReadError
+        When the file is missing, empty or not a table, or a name appears twice.
+    """
+    if not path.is_file():
+        raise ReadError("there is no such file", path=str(path))
+    table = _workbook(path) if path.suffix.lower() in _WORKBOOKS else _text(path)
+    if table.shape[1] < 2 or table.empty:
+        raise ReadError(f"the table has {table.shape[1]} columns and {len(table)} rows", path=path.name,
+                        accepted="give names in the first column and amounts in the others")  # fmt: skip
+    names = [str(name).strip() for name in table.iloc[:, 0]]
+    double = sorted({name for name in names if names.count(name) > 1})
+    if double:
+        raise ReadError(f"sample {listed(double)} has more than one row", path=path.name, accepted="give each one row")
+    return table, names
 
 
 def _text(path: Path) -> pd.DataFrame:
@@ -92,7 +104,8 @@ def _workbook(path: Path) -> pd.DataFrame:
         raise ReadError(f"the workbook cannot be read ({type(cause).__name__})", path=path.name) from cause
 
 
-def _split(header: str) -> tuple[str, str]:
+def split_unit(header: str) -> tuple[str, str]:
+    """Name and unit of a heading such as ``copper (mol/L)``; the unit is empty where there is none."""
     match = re.fullmatch(r"\s*(.*?)\s*[(\[]\s*(.+?)\s*[)\]]\s*", header)
     return (match.group(1), match.group(2)) if match and match.group(1) else (header.strip(), "")
 

@@ -16,11 +16,8 @@ import xarray as xr
 
 from unmix.errors import WriteError
 from unmix.files import harmless_cell, whole_file
-from unmix.report.view import Composition, Result, refused_of, results_of
-
-#: what a cell can hold; None where something is not known
-Value = str | float | bool | None
-Row = dict[str, Value]
+from unmix.report.calibrations import FIGURE_COLUMNS, PREDICTION_COLUMNS, figure_rows, prediction_rows
+from unmix.report.view import Composition, Result, Row, Value, refused_of, results_of
 
 #: columns of the long table of amounts, in their order
 AMOUNT_COLUMNS = (
@@ -32,6 +29,11 @@ DESIGN_COLUMNS = (
     "component", "variance_inflation", "selectivity", "detection_limit", "unit", "confused_with", "verdict",
     "reason",
 )  # fmt: skip
+#: kind -> the columns of its table
+_COLUMNS = {"quantify": AMOUNT_COLUMNS, "conditioning": DESIGN_COLUMNS, "prediction": PREDICTION_COLUMNS,
+            "calibration": FIGURE_COLUMNS}  # fmt: skip
+#: kind -> what a sheet of it is called
+_SHEETS = {"quantify": "amounts", "conditioning": "conditioning", "prediction": "predictions", "calibration": "figures"}
 _ENTRIES = ("settings", "versions", "inputs", "assumptions", "notes", "refused")
 
 
@@ -40,17 +42,19 @@ def _number(value: float) -> float | None:
 
 
 def rows(result: xr.Dataset | Sequence[xr.Dataset]) -> list[Row]:
-    """One row an amount (or, of a conditioning, a component), with unit, verdict and reason in every row.
+    """One row an amount, with unit, verdict and reason in every row.
+
+    Of a conditioning it is one row a component, of a prediction one a value, of a calibration one a property and set.
 
     Parameters
     ----------
     result : Dataset or sequence of Dataset
-        From ``quantify`` or ``conditioning``.
+        From ``quantify``, ``conditioning`` or ``predict``, or the ``data`` of a calibration.
 
     Returns
     -------
     list of dict
-        Keys as in :data:`AMOUNT_COLUMNS` or :data:`DESIGN_COLUMNS`; None where a number is not known.
+        Keys as :func:`columns` gives them; None where a number is not known.
 
     Raises
     ------
@@ -58,8 +62,14 @@ def rows(result: xr.Dataset | Sequence[xr.Dataset]) -> list[Row]:
         When it is no result, or lacks what cannot be done without.
     """
     found: list[Row] = []
-    for one in results_of(result):
-        found += _design_rows(Result(one)) if one.attrs["kind"] == "conditioning" else _amount_rows(one)
+    for one in results_of(result, kinds=tuple(_COLUMNS)):
+        kind = one.attrs["kind"]
+        if kind == "conditioning":
+            found += _design_rows(Result(one))
+        elif kind == "quantify":
+            found += _amount_rows(one)
+        else:
+            found += prediction_rows(one) if kind == "prediction" else figure_rows(one)
     return found
 
 
@@ -109,7 +119,7 @@ def _design_rows(view: Result) -> list[Row]:
 
 def columns(result: xr.Dataset | Sequence[xr.Dataset]) -> tuple[str, ...]:
     """The columns of the table that :func:`rows` gives, in their order."""
-    return DESIGN_COLUMNS if results_of(result)[0].attrs["kind"] == "conditioning" else AMOUNT_COLUMNS
+    return _COLUMNS[results_of(result, kinds=tuple(_COLUMNS))[0].attrs["kind"]]
 
 
 def csv_text(table: Sequence[Mapping[str, Value]], titles: Sequence[str]) -> str:
@@ -143,7 +153,7 @@ def document(result: xr.Dataset | Sequence[xr.Dataset]) -> dict[str, Any]:
     dict
         ``kind``, ``rows``, ``refused`` and, one entry a Dataset, ``provenance``.
     """
-    several = results_of(result)
+    several = results_of(result, kinds=tuple(_COLUMNS))
     attributes = []
     for one in several:
         view = Result(one)
@@ -190,7 +200,7 @@ def write_xlsx(result: xr.Dataset | Sequence[xr.Dataset], path: Path, *, overwri
     titles = columns(result)
     book = Workbook()
     sheet = book.active
-    sheet.title = "amounts" if titles is AMOUNT_COLUMNS else "conditioning"
+    sheet.title = next(_SHEETS[kind] for kind, held in _COLUMNS.items() if held is titles)
     sheet.append(list(titles))
     for row in rows(result):
         sheet.append([_sheet_cell(row[title]) for title in titles])
@@ -214,7 +224,7 @@ def write_json(result: xr.Dataset | Sequence[xr.Dataset], path: Path, *, overwri
 
 def write_netcdf(result: xr.Dataset | Sequence[xr.Dataset], path: Path, *, overwrite: bool = False) -> None:
     """Write whole results as netCDF; results on several axes become the groups ``grid_1``, ``grid_2``, ..."""
-    several = results_of(result)
+    several = results_of(result, kinds=tuple(_COLUMNS))
     with whole_file(path, overwrite) as beside:
         for number, one in enumerate(several, start=1):
             # netCDF has no empty attribute and no truth value

@@ -15,11 +15,20 @@ from unmix.kernels import BoolArray, FloatArray
 from unmix.spectra import labels_of, spectral_dim
 from unmix.units import axis_title
 
+#: what a cell of a table can hold; None where something is not known
+Value = str | float | bool | None
+Row = dict[str, Value]
+
 #: variables without which nothing can be shown
 _NEEDED = {
     "quantify": ("concentration", "lower", "upper", "verdict", "reason"),
     "conditioning": ("variance_inflation", "selectivity"),
+    "prediction": ("predicted", "lower", "upper", "verdict", "reason"),
+    "calibration": ("error", "verdict", "reason"),
 }
+
+#: kinds that have a page and figures; tables are made of every kind
+PAGES = ("quantify", "conditioning")
 
 #: a step of the axis that is so many times the usual one separates two regions
 JUMP = 5.0
@@ -28,8 +37,8 @@ JUMP = 5.0
 VERDICTS = ("unsupported", "doubtful", "supported")
 
 
-def results_of(result: Any) -> list[xr.Dataset]:
-    """One result or several as a list of checked Datasets of one kind.
+def results_of(result: Any, *, kinds: Sequence[str] = PAGES) -> list[xr.Dataset]:
+    """One result or several as a list of checked Datasets of one kind, out of those that are accepted.
 
     Raises
     ------
@@ -43,10 +52,10 @@ def results_of(result: Any) -> list[xr.Dataset]:
         if not isinstance(one, xr.Dataset):
             raise InputError(f"a result is a Dataset, not a {type(one).__name__}",
                              accepted="give what unmix.quantify or unmix.conditioning returned")  # fmt: skip
-        kind = one.attrs.get("kind")
-        if kind not in _NEEDED:
+        kind = str(one.attrs.get("kind"))
+        if kind not in kinds:
             raise InputError(f"a result of kind '{kind}' cannot be shown (attrs['kind'])",
-                             accepted=f"one of {', '.join(_NEEDED)}")  # fmt: skip
+                             accepted=f"one of {', '.join(kinds)}")  # fmt: skip
         missing = [name for name in _NEEDED[kind] if name not in one]
         if missing:
             raise InputError(f"the result lacks the variable {listed(missing)}",
@@ -78,7 +87,7 @@ class Result:
     def __init__(self, data: xr.Dataset) -> None:
         self.data = data
         self.kind = str(data.attrs["kind"])
-        self.components = [str(name) for name in data["component"].values]
+        self.components = [str(name) for name in data["component"].values] if "component" in data else []
         curves = [name for name in ("measured", "pure_signal") if name in data]
         self.dim = spectral_dim(data[curves[0]], name="the result") if curves else ""
         self.axis: FloatArray = np.asarray(data[self.dim].values, dtype=float) if curves else np.empty(0)

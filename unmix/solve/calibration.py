@@ -361,9 +361,10 @@ def _tested(
 
 
 def _units(unit: Any, reference: Any, names: list[str]) -> list[str]:
-    if isinstance(unit, Mapping):
-        return [str(unit.get(name, "1")) for name in names]
-    return [str(unit or getattr(reference, "attrs", {}).get("units", "1"))] * len(names)
+    held = unit or getattr(reference, "attrs", {}).get("units", "1")
+    if isinstance(held, Mapping):
+        return [str(held.get(name, "1")) for name in names]
+    return [str(held)] * len(names)
 
 
 def _per_property(given: Any, names: list[str]) -> list[float]:
