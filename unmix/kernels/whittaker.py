@@ -211,22 +211,13 @@ def reweighted(
     -----
     Every spectrum is solved as if it were alone: the answer does not depend on its company.
     """
-    present = np.isfinite(y)
-    weights = np.where(present, v, 0.0)
-    filled = np.where(present, y, 0.0)
-    usable = np.count_nonzero(weights > 0, axis=1) > order
-    z = np.full_like(y, np.nan)
-    count = np.zeros(y.shape[0], dtype=np.int64)
-    settled = np.zeros(y.shape[0], dtype=np.bool_)
-    differences = Differences(axis, order)
-    if usable.any():
-        args = (filled[usable], weights[usable], differences, penalty, rule, iterations, tolerance)
-        try:
-            answer = _compiled(*args) if filled[usable].size >= MANY else _one_by_one(*args)
-        except LinAlgError:
-            answer = _compiled(*args)
-        z[usable], count[usable], settled[usable] = answer
-    return z, count, settled
+    args = (y, v, Differences(axis, order), penalty, rule, iterations, tolerance)
+    if y.size >= MANY:
+        return _compiled(*args)
+    try:
+        return _one_by_one(*args)
+    except LinAlgError:
+        return _compiled(*args)
 
 
 def _one_by_one(
@@ -241,18 +232,21 @@ def _one_by_one(
     name, setting = rule
     renew = RULES[name]
     bands = differences.bands()
-    z = np.empty_like(y)
-    count = np.full(y.shape[0], iterations)
+    z = np.full_like(y, np.nan)
+    count = np.zeros(y.shape[0], dtype=np.int64)
     settled = np.zeros(y.shape[0], dtype=np.bool_)
     for row in range(y.shape[0]):
+        known = np.isfinite(y[row])
+        weights, values = np.where(known, v, 0.0), np.where(known, y[row], 0.0)
+        if np.count_nonzero(weights) <= differences.order:
+            continue
         w: FloatArray = np.ones(y.shape[1])
-        for step in range(1, iterations + 1):
-            z[row] = _Solver(differences, bands, penalty, v[row] * w).solve(v[row] * w * y[row])
-            fit = Fit(y[row], z[row], v[row], w, step, differences.order, setting, tolerance)
-            w, done = renew(fit)
-            if done:
-                count[row], settled[row] = step, True
-                break
+        while count[row] < iterations and not settled[row]:
+            count[row] += 1
+            total = weights * w
+            z[row] = _Solver(differences, bands, penalty, total).solve(total * values)
+            fit = Fit(values, z[row], weights, w, int(count[row]), differences.order, setting, tolerance)
+            w, settled[row] = renew(fit)
     return z, count, settled
 
 

@@ -214,6 +214,21 @@ def _renew(rule, y, z, v, w, step, setting, tolerance, order, done, sums):
         _logistic(y, z, v, w, tolerance, done, sums)
 
 
+@numba.njit(cache=True, error_model="numpy")
+def _load(part, weights, y, v, w, sums):
+    """Turn a block of spectra into lanes; the first row of ``sums`` counts the weighted channels of each."""
+    used, m = part.shape
+    sums[0] = 0.0
+    for i in range(m):
+        for j in range(LANES):
+            value = part[j, i] if j < used else 0.0
+            known = value == value  # noqa: PLR0124  not so for NaN
+            y[i, j] = value if known else 0.0
+            v[i, j] = weights[i] if known else 0.0
+            w[i, j] = v[i, j]
+            sums[0, j] += 1.0 if v[i, j] > 0.0 else 0.0
+
+
 @numba.njit(cache=True, parallel=True, fastmath=_MATH, error_model="numpy")
 def reweighted(spectra, weights, gaps, weight, rule, setting, iterations, tolerance):
     """Penalised baselines of many spectra.
@@ -221,9 +236,9 @@ def reweighted(spectra, weights, gaps, weight, rule, setting, iterations, tolera
     Parameters
     ----------
     spectra : ndarray of float64, shape (n, m)
-        Finite.
-    weights : ndarray of float64, shape (n, m)
-        Zero where a channel is missing; more than d of each row above zero.
+        NaN marks a missing channel.
+    weights : ndarray of float64, shape (m,)
+        At or above zero.
     gaps : ndarray, shape (d, m - 1)
         Distances t_(i+k) - t_i, k = 1 .. d.
     weight : ndarray, shape (m - 1,)
@@ -238,13 +253,14 @@ def reweighted(spectra, weights, gaps, weight, rule, setting, iterations, tolera
     Returns
     -------
     curves : ndarray, shape (n, m)
+        NaN for a spectrum with d weighted channels or fewer.
     count : ndarray of int, shape (n,)
     settled : ndarray of bool, shape (n,)
     """
     n, m = spectra.shape
     order = gaps.shape[0]
     curves = np.empty_like(spectra)
-    count = np.full(n, iterations)
+    count = np.zeros(n, dtype=np.int64)
     settled = np.zeros(n, dtype=np.bool_)
     blocks = (n + LANES - 1) // LANES
     # work arrays are allocated once a chunk, not once a block
@@ -257,22 +273,24 @@ def reweighted(spectra, weights, gaps, weight, rule, setting, iterations, tolera
         for block in range(chunk * blocks // chunks, (chunk + 1) * blocks // chunks):
             low = block * LANES
             used = min(LANES, n - low)
-            for i in range(m):
-                for j in range(used):
-                    y[i, j] = spectra[low + j, i]
-                    v[i, j] = weights[low + j, i]
-                    w[i, j] = v[i, j]
-            open_lanes = used
+            _load(spectra[low : low + used], weights, y, v, w, sums)
+            open_lanes = 0
+            for j in range(used):
+                if sums[0, j] > order:
+                    open_lanes += 1
+                    count[low + j] = -1
+                else:
+                    curves[low + j] = np.nan
             for step in range(1, iterations + 1):
+                if open_lanes == 0:
+                    break
                 _solve(y, w, z, gaps, weight, state, gain)
                 _renew(rule, y, z, v, w, step, setting, tolerance, order, done, sums)
                 for j in range(used):
-                    if not settled[low + j] and (done[j] or step == iterations):
+                    if count[low + j] < 0 and (done[j] or step == iterations):
                         settled[low + j] = done[j]
                         count[low + j] = step
                         for i in range(m):
                             curves[low + j, i] = z[i, j]
                         open_lanes -= 1
-                if open_lanes == 0:
-                    break
     return curves, count, settled
