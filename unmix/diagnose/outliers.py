@@ -8,6 +8,9 @@ from scipy import stats
 
 from unmix.kernels import FloatArray
 
+#: fewest samples from which the traces of a covariance can be told
+_FEW = 4
+
 #: a region of channels at fault ends where their share falls below this part of the highest
 _EDGE = 0.25
 
@@ -43,8 +46,9 @@ def estimated_traces(residuals: FloatArray) -> tuple[float, float, float]:
     """
     n, p = residuals.shape
     s1, s2, s3 = traces(np.linalg.svd(residuals, compute_uv=False) ** 2 / max(n, 1))
-    if s1 <= 0:
-        return 0.0, 0.0, 0.0
+    if s1 <= 0 or n < _FEW:
+        # three samples leave the third moment open
+        return s1, s2, s3
     u = 1.0 / n
     # products of traces in the order: (tr C^2, (tr C)^2) and (tr C^3, tr C tr C^2, (tr C)^3)
     two = np.linalg.solve([[1 + u, u], [2 * u, 1.0]], [s2, s1**2])[0]
