@@ -67,9 +67,7 @@ def test_every_answer_is_an_optimum(problem):
     assert (x >= 0).all()
     length, size = sizes(a, y)
     gradient = (y - x @ a.T) @ a / length / size[:, None]
-    note(
-        f"largest gradient of a positive amount {np.abs(gradient[x > 0]).max(initial=0)}, of a zero one {gradient[x == 0].max(initial=0)}"
-    )
+    note(f"of positive amounts {np.abs(gradient[x > 0]).max(initial=0)}, of zero {gradient[x == 0].max(initial=0)}")
     # relative to the data, per column of unit length; rounding of the product itself is of the order of 1e-15
     assert np.abs(gradient[x > 0]).max(initial=0.0) < 1e-10
     assert gradient[x == 0].max(initial=0.0) < 1e-10
@@ -103,7 +101,7 @@ def test_amounts_equal_where_the_design_determines_them(problem):
 @given(problems())
 def test_no_answer_depends_on_the_rest_of_the_batch(problem):
     a, y = problem
-    length, size = sizes(a, y)
+    _, size = sizes(a, y)
     whole = nnls(a, y)
     alone = np.vstack([nnls(a, row[None]) for row in y])
     # fitted values: of dependent columns only the sum is determined
