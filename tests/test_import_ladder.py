@@ -19,6 +19,7 @@ LADDER = [
     ["method"],
     ["methodfile"],
     ["read", "prepare", "diagnose"],
+    ["chunked"],
     ["spectra", "provenance", "files"],
     ["units", "ordinate_units"],
     ["errors", "kernels"],

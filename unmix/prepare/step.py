@@ -15,6 +15,7 @@ import xarray as xr
 from sklearn.base import BaseEstimator, OneToOneFeatureMixin, TransformerMixin, clone
 from sklearn.utils.validation import check_is_fitted, validate_data
 
+from unmix.chunked import one_thread, whole_channels
 from unmix.errors import AxisError, InputError, UnmixWarning, listed
 from unmix.kernels import FloatArray, IntArray
 from unmix.prepare.accept import Rule, check_parameters
@@ -163,14 +164,18 @@ class Step(OneToOneFeatureMixin, TransformerMixin, BaseEstimator, ABC):
             values = _finite_or_missing(np.asarray(spectra.values), spectra)
             data: Any = self._tell(values, self._on_values(values, work), spectra)
         else:
-            data = spectra.chunk({spectra.dims[-1]: -1}).data.map_blocks(
-                self._on_values, work, dtype=spectra.dtype, chunks=self._chunks(spectra)
-            )
+            spectra = whole_channels(spectra)
+            data = spectra.data.map_blocks(self._on_block, work, dtype=spectra.dtype, chunks=self._chunks(spectra),
+                                           meta=np.empty((0,) * spectra.ndim, dtype=spectra.dtype))  # fmt: skip
         prepared = self._relabel(spectra, data, mark)
         return prepared.isel(sample=0) if X.ndim == 1 else prepared
 
     def _chunks(self, spectra: xr.DataArray) -> tuple[tuple[int, ...], ...]:
         return (*(spectra.chunks or ())[:-1], (self.axis_out_.size,))
+
+    def _on_block(self, values: FloatArray, work: Callable[[FloatArray], FloatArray]) -> FloatArray:
+        with one_thread():
+            return self._on_values(_finite_or_missing(values, None), work)
 
     def _on_values(self, values: FloatArray, work: Callable[[FloatArray], FloatArray]) -> FloatArray:
         rows = values.reshape(-1, values.shape[-1]).astype(np.float64)

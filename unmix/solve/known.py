@@ -6,11 +6,14 @@ pipelines stands in ``estimator``.
 
 import json
 from collections.abc import Sequence
+from functools import partial
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
 import xarray as xr
 
+from unmix.chunked import by_block, is_chunked
+from unmix.diagnose.residual import MAX_BANDS
 from unmix.diagnose.saturation import saturated
 from unmix.errors import InputError, listed
 from unmix.prepare.axis import common_axis, select_regions
@@ -120,6 +123,8 @@ def quantify(
         options |= method.settings_for("quantify", options)
         return quantify(spectra, pure, method=type(method)(method.steps, method.name), library=library,
                         progress=progress, **options)  # fmt: skip
+    if is_chunked(spectra):
+        return _by_block(spectra, pure, {**options, "method": method, "library": library})
     check_baseline(baseline)
     check_level(level)
     check_flag("nonnegative", nonnegative)
@@ -163,6 +168,17 @@ def quantify(
         notes=json.dumps(notes + json.loads(given.attrs.get("notes", "[]"))),
         **provenance("quantify", options, spectra=given, pure=pure),
     )
+
+
+def _by_block(spectra: xr.DataArray, pure: Any, options: dict[str, Any]) -> xr.Dataset:
+    """The same for spectra in chunks, when it is asked for."""
+    if isinstance(options["path_length"], Sequence) and not isinstance(options["path_length"], str):
+        raise InputError("path_length holds one length a spectrum, and the spectra are in chunks",
+                         accepted="give the coordinate path_length along the spectra, or one length for all")  # fmt: skip
+    given = {key: value.load() if isinstance(value, (xr.DataArray, xr.Dataset)) else value
+             for key, value in options.items()}  # fmt: skip
+    known = pure.load() if isinstance(pure, (xr.DataArray, xr.Dataset)) else pure
+    return by_block(partial(quantify, pure=known, **given), spectra, room={"misfit_band": MAX_BANDS})
 
 
 def _beside(library: Any, samples: xr.DataArray) -> xr.DataArray:
