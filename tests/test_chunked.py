@@ -9,6 +9,7 @@ import xarray as xr
 import unmix
 from unmix.chunked import CUT, TEXT, _cut, by_block, is_chunked
 from unmix.errors import InputError, UnmixWarning
+from unmix.method import Method
 
 dask = pytest.importorskip("dask.array")
 
@@ -77,8 +78,6 @@ def test_learnt_spectra_and_methods_in_chunks(mixtures, rng):
     learnt = unmix.learn_pure(standards, table, unit="g/L")
     given = spectra.drop_vars("path_length")
     same(unmix.quantify(given.chunk({"sample": 4}), learnt), unmix.quantify(given, learnt))
-    from unmix.method import Method
-
     method = Method.from_text(
         'unmix_method = 1\n[[step]]\nuse = "SavitzkyGolay"\nwindow = 11\norder = 2\nderivative = 1\n'
     )

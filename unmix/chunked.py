@@ -105,7 +105,7 @@ def one_block(spectra: xr.DataArray, *, work: Work, names: tuple[str, ...], room
     with one_thread():
         found = work(spectra)[list(names)]
     found = found.drop_vars([name for name in found.coords if name not in found.indexes])
-    fill = {name: "" if array.dtype.kind in "UO" else np.nan for name, array in found.data_vars.items()}
+    fill: Any = {name: "" if array.dtype.kind in "UO" else np.nan for name, array in found.data_vars.items()}
     for dim, size in room.items():
         if dim in found.dims:
             found = found.pad({dim: (0, size - found.sizes[dim])}, constant_values=fill)

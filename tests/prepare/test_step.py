@@ -11,7 +11,7 @@ from sklearn.model_selection import cross_val_predict
 from sklearn.pipeline import make_pipeline
 
 from unmix import prepare
-from unmix.errors import AxisError, InputError
+from unmix.errors import AxisError, InputError, UnmixWarning
 from unmix.prepare import STEPS
 from unmix.prepare.additivity import require_additive
 
@@ -93,7 +93,7 @@ def test_lazy_arrays_stay_lazy_and_agree(step, labelled):
 
     step.fit(labelled)
     lazy = labelled.chunk({"sample": 5, "wavelength": 40})
-    with dask.config.set(scheduler=refuse):
+    with dask.config.set(scheduler=refuse), pytest.warns(UnmixWarning, match="chunks along 'wavelength'"):
         prepared = step.transform(lazy)
     xr.testing.assert_allclose(prepared.compute(scheduler="synchronous"), step.transform(labelled), atol=1e-9)
 

@@ -174,9 +174,9 @@ def _by_block(spectra: xr.DataArray, pure: Any, options: dict[str, Any]) -> xr.D
     """The same for spectra in chunks, when it is asked for."""
     if isinstance(options["path_length"], Sequence) and not isinstance(options["path_length"], str):
         raise InputError("path_length holds one length a spectrum, and the spectra are in chunks",
-                         accepted="give the coordinate path_length along the spectra, or one length for all")  # fmt: skip
-    given = {key: value.load() if isinstance(value, (xr.DataArray, xr.Dataset)) else value
-             for key, value in options.items()}  # fmt: skip
+                         accepted="give the coordinate path_length of the spectra, or one length for all")  # fmt: skip
+    given: dict[str, Any] = {key: value.load() if isinstance(value, (xr.DataArray, xr.Dataset)) else value
+                             for key, value in options.items()}  # fmt: skip
     known = pure.load() if isinstance(pure, (xr.DataArray, xr.Dataset)) else pure
     return by_block(partial(quantify, pure=known, **given), spectra, room={"misfit_band": MAX_BANDS})
 
