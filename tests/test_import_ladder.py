@@ -14,7 +14,7 @@ PACKAGE = Path(__file__).parent.parent / "unmix"
 #: the ladder, from top to bottom; a room may import what stands below it
 LADDER = [
     ["cli"],
-    ["report", "archive"],
+    ["report", "archive", "stream"],
     ["solve"],
     ["method"],
     ["methodfile"],
