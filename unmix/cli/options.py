@@ -45,6 +45,23 @@ Report = Annotated[
     Path | None,
     typer.Option("--report", metavar="FILE", help="Write a page to look at (HTML, works offline)."),
 ]
+Out = Annotated[
+    Path | None,
+    typer.Option("--out", metavar="STORE", help="Answer one store of any size block by block into this Zarr store."),
+]
+Resume = Annotated[bool, typer.Option("--resume", help="Go on with a run into a store that was stopped.")]
+Rows = Annotated[
+    int | None,
+    typer.Option("--rows", metavar="N", help="Spectra, or lines of an image, in a block of a run into a store."),
+]
+Workers = Annotated[
+    int | None,
+    typer.Option("--workers", metavar="N", help="Processes of a run into a store; one a core if unsaid."),
+]
+Scheduler = Annotated[
+    str | None,
+    typer.Option("--scheduler", metavar="ADDRESS", help="A dask scheduler for it, such as tcp://host:8786."),
+]
 Overwrite = Annotated[bool, typer.Option("--overwrite", help="Replace files that exist already.")]
 Quiet = Annotated[bool, typer.Option("--quiet", "-q", help="Print nothing but errors.")]
 Debug = Annotated[bool, typer.Option("--debug", help="Show the full Python error when something fails.")]

@@ -7,12 +7,14 @@ import typer
 
 from unmix.cli import options
 from unmix.cli.output import OutputFiles, Status, errors_as_sentences, status_of
+from unmix.cli.stored import StoreOptions, stream_store
 
 EXAMPLE = """
 Example:
   unmix quantify drums/*.jdx --pure pure/ --baseline 1 --report drums.html
   unmix quantify run.csv --pure pure/ --regions 1650-1800 --path-length "25 um"
   unmix quantify run.csv --pure pure/ --method derivative.toml
+  unmix quantify cube.zarr --pure pure/ --out result.zarr
   unmix quantify run.csv --standards standards/ --amounts amounts.csv --report run.html
 """
 
@@ -53,6 +55,11 @@ def command(
     json: options.Json = None,
     netcdf: options.NetCdf = None,
     report: options.Report = None,
+    out: options.Out = None,
+    resume: options.Resume = False,
+    rows: options.Rows = None,
+    workers: options.Workers = None,
+    scheduler: options.Scheduler = None,
     overwrite: options.Overwrite = False,
     quiet: options.Quiet = False,
     debug: options.Debug = False,
@@ -66,6 +73,8 @@ def command(
     with errors_as_sentences(debug) as shown:
         files = OutputFiles(csv, xlsx, json, netcdf, report, overwrite)
         files.check()
+        store = StoreOptions(out, resume, rows, workers, scheduler)
+        store.check(files)
         settings: dict[str, Any] = {
             "baseline": options.baseline_from(baseline),
             "regions": options.regions_from(regions),
@@ -74,13 +83,16 @@ def command(
             "noise": noise,
             "nonnegative": not no_nonnegative,
         }
-        from unmix.cli.samples import known_spectra, quantify_files, read_method  # noqa: PLC0415 - heavy
+        from unmix.cli.samples import known_spectra, quantify_files, quantify_work, read_method  # noqa: PLC0415 - heavy
         from unmix.cli.show import print_amounts, print_reasons, print_refused, remarks_of  # noqa: PLC0415 - heavy
 
         given = {"unit": pure_unit, "quantity": pure_quantity, "per": per}
         if method is not None:
             settings["method"] = read_method(method)
         known = known_spectra(pure, standards, amounts, settings, given)
+        if out is not None:
+            work = quantify_work(known, settings)
+            raise typer.Exit(stream_store(work, samples, store, overwrite=overwrite, unit=unit, quantity=quantity))
         run = quantify_files(samples, known, settings, unit=unit, quantity=quantity)
         shown.update(remarks_of(run.results))
         if not (quiet or files.stream):

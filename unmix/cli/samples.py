@@ -5,6 +5,7 @@ import math
 from collections import Counter
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
+from functools import partial
 from importlib import import_module
 from pathlib import Path
 from typing import Any
@@ -132,6 +133,12 @@ def quantify_files(
     if refused:
         results[0] = results[0].assign_attrs(refused=json.dumps(refused))
     return Run(results, order, refused)
+
+
+def quantify_work(pure: xr.DataArray | xr.Dataset, settings: dict[str, Any]) -> Any:
+    """What is done with every block of a store."""
+    _check(settings)
+    return partial(unmix.quantify, pure=pure, **settings)
 
 
 def _check(settings: dict[str, Any]) -> None:
