@@ -15,7 +15,6 @@ from collections.abc import Callable, Iterable, Iterator
 from contextlib import contextmanager
 from dataclasses import dataclass
 from functools import lru_cache, partial
-from importlib import import_module
 from pathlib import Path
 from typing import Any
 
@@ -253,18 +252,19 @@ def do_block(block: int, *, job: _Job) -> tuple[int, Counter[str]]:
 _Run = Callable[[_Job, list[int]], Iterable[tuple[int, Counter[str]]]]
 
 
-def _distributed() -> Any:
+def _cluster() -> Any:
     try:
-        return import_module("distributed")
+        import distributed  # noqa: PLC0415 - an optional package
     except ImportError as error:
         raise InputError("a scheduler needs the package distributed, which is not installed",
                          accepted="install unmix with its extra 'scale'") from error  # fmt: skip
+    return distributed
 
 
 @contextmanager
 def _pool(workers: int, scheduler: str | None, blocks: int) -> Iterator[_Run]:
     if scheduler is not None:
-        cluster: Any = _distributed()
+        cluster = _cluster()
         with cluster.Client(scheduler) as client:
 
             def on_cluster(job: _Job, todo: list[int]) -> Iterator[tuple[int, Counter[str]]]:

@@ -65,23 +65,17 @@ def assemble(
     guarded = model.guard(rows)
     n, k = guarded.scores.shape
     held = left.model_of >= 0
-    spectral = left.residuals[held]
-    near = nearest(guarded.scores / np.sqrt(model.score_variance), guarded.scores / np.sqrt(model.score_variance),
-                   itself=True)  # fmt: skip
-    limits = _Limits(residual_limit(estimated_traces(spectral), level), distance_limit(k, n, level), float(near.max()))
+    scaled = guarded.scores / np.sqrt(model.score_variance)
+    near = nearest(scaled, scaled, itself=True)
+    limits = _Limits(residual_limit(estimated_traces(left.residuals[held]), level), distance_limit(k, n, level),
+                     float(near.max()))  # fmt: skip
     predicted = choice.predicted[:, choice.components]
     left_out = predicted.mean(axis=0)
     q = np.sum(left.residuals**2, axis=1)
     proposed = _outliers(values - left_out, guarded.t2, q, k, limits)
     sets = _figures(values, guarded.predicted, predicted, evidence, k)
     verdict, reason = judge(values, rows, sets, evidence, names)
-    odd = [label for label, why in zip(labels_of(samples), proposed, strict=True) if why]
-    if odd:
-        evidence.remarks.append(f"Proposed as outliers, none was removed: {listed(odd)}.")
-    twins = _twins(rows, evidence.plan)
-    if twins.any():
-        evidence.remarks.append(f"Identical spectra were tested apart from each other: "
-                                f"{listed(np.array(labels_of(samples))[twins])}; errors may be too small.")  # fmt: skip
+    _remark(evidence, labels_of(samples), proposed, _twins(rows, evidence.plan))
     dim = spectral_dim(prepared)
 
     def over(dims: Any, array: Any, name: str, units: str = "1") -> tuple[Any, Any, dict[str, str]]:
@@ -92,15 +86,10 @@ def assemble(
         **{name: over(("set", "property"), [[getattr(one, name) for one in each] for each in sets.values()], words,
                       "1" if name in ("bias_p", "slope", "line_p", "r2", "rpd", "count") else "as property")
            for name, words in _WORDS.items()},
-        "curve": over(("components", "property"), np.sqrt(np.nanmean((choice.predicted - values) ** 2, axis=(0, 2))),
-                      "SECV with so many latent variables", "as property"),
-        "curve_standard_error": over("components", choice.standard_error,
-                                     "Standard error of the mean squared error, in variances of the reference"),
+        **_choice_variables(evidence, values),
         "reference": over(("sample", "property"), values, "Reference value", "as property"),
         "fitted": over(("sample", "property"), guarded.predicted, "Fitted value", "as property"),
         "left_out": over(("sample", "property"), left_out, "Value predicted without the sample", "as property"),
-        "nested": over(("sample", "property"), evidence.outer, "Value predicted by the nested loop", "as property"),
-        "nested_components": over("outer", evidence.outer_components, "Latent variables chosen in each outer fold"),
         "weight": over("sample", np.ones(n) if weights is None else weights, "Weight in training"),
         "q_left_out": over("sample", q, "Q residual without the sample", "signal squared"),
         "t2_left_out": over("sample", left.t2, "Hotelling T2 without the sample"),
@@ -127,6 +116,33 @@ def assemble(
              "suggested_components": choice.suggested, "permutations": evidence.permutations,
              "caution": CAUTION}  # fmt: skip
     return xr.Dataset(data, coords=coords, attrs=attrs)
+
+
+def _remark(evidence: Evidence, labels: list[str], proposed: list[str], twins: BoolArray) -> None:
+    """Name samples that stand out, and spectra that occur more than once."""
+    odd = [label for label, why in zip(labels, proposed, strict=True) if why]
+    if odd:
+        evidence.remarks.append(f"Proposed as outliers, none was removed: {listed(odd)}.")
+    if twins.any():
+        evidence.remarks.append(f"Identical spectra were tested apart from each other: "
+                                f"{listed(np.array(labels)[twins])}; errors may be too small.")  # fmt: skip
+
+
+def _choice_variables(evidence: Evidence, values: FloatArray) -> dict[str, Any]:
+    """How the number of latent variables was chosen."""
+
+    def over(dims: Any, array: Any, name: str, units: str = "1") -> tuple[Any, Any, dict[str, str]]:
+        return dims, array, {"long_name": name, "units": units}
+
+    choice = evidence.choice
+    return {
+        "curve": over(("components", "property"), np.sqrt(np.nanmean((choice.predicted - values) ** 2, axis=(0, 2))),
+                      "SECV with so many latent variables", "as property"),
+        "curve_standard_error": over("components", choice.standard_error,
+                                     "Standard error of the mean squared error, in variances of the reference"),
+        "nested": over(("sample", "property"), evidence.outer, "Value predicted by the nested loop", "as property"),
+        "nested_components": over("outer", evidence.outer_components, "Latent variables chosen in each outer fold"),
+    }  # fmt: skip
 
 
 def _model_variables(model: LatentModel, left: LeftOut, dim: str) -> dict[str, Any]:

@@ -2,11 +2,13 @@
 
 import json
 from dataclasses import dataclass
+from functools import partial
 from typing import Any
 
 import numpy as np
 import xarray as xr
 
+from unmix.chunked import by_block, is_chunked
 from unmix.diagnose.jackknife import jackknife_plus, samples_for
 from unmix.diagnose.outliers import region_at_fault
 from unmix.errors import InputError, listed
@@ -87,19 +89,16 @@ def predict(calibration: Calibration, spectra: Any, *, level: float = 0.95) -> x
         raise InputError(f"calibration is a {type(calibration).__name__}",
                          accepted="give what unmix.calibrate or unmix.load returned")  # fmt: skip
     check_level(level)
+    if is_chunked(spectra):
+        return by_block(partial(predict, calibration, level=level), spectra)
     given, prepared, assumptions = calibration.prepare(spectra)
-    taken = sorted(str(name) for name in given.coords if name in RESERVED)
-    if taken:
-        raise InputError(f"spectra have a coordinate {listed(taken)}, the name of a variable of the result",
-                         accepted="rename or drop it")  # fmt: skip
+    _refuse_taken(given)
     rows = rows_of(prepared)
     guarded = calibration.model.guard(rows, _columns(calibration))
     lower, upper = _intervals(calibration, guarded.projected, level)
     judged = _judge(calibration, prepared, rows, guarded, lower, level)
-    leading = given.dims[:-1]
-    shape = given.shape[:-1]
-    data = calibration.data
-    names = calibration.properties
+    leading, shape = given.dims[:-1], given.shape[:-1]
+    data, names = calibration.data, calibration.properties
     units = [str(unit) for unit in data["property_unit"].values]
     unit = units[0] if len(set(units)) == 1 else "as property"
     dim = spectral_dim(prepared)
@@ -146,6 +145,13 @@ def predict(calibration: Calibration, spectra: Any, *, level: float = 0.95) -> x
              "calibration_inputs": data.attrs["inputs"], "preparation": data.attrs["preparation"],
              **provenance("predict", {"level": level}, spectra=given)}  # fmt: skip
     return xr.Dataset(variables, coords={**coords, "property": names}, attrs=attrs)
+
+
+def _refuse_taken(given: xr.DataArray) -> None:
+    taken = sorted(str(name) for name in given.coords if name in RESERVED)
+    if taken:
+        raise InputError(f"spectra have a coordinate {listed(taken)}, the name of a variable of the result",
+                         accepted="rename or drop it")  # fmt: skip
 
 
 def _columns(calibration: Calibration) -> FloatArray:
