@@ -13,6 +13,7 @@ PACKAGE = Path(__file__).parent.parent / "unmix"
 
 #: the ladder, from top to bottom; a room may import what stands below it
 LADDER = [
+    ["__main__"],
     ["cli"],
     ["report", "archive", "stream"],
     ["solve"],

@@ -80,3 +80,8 @@ def test_the_installed_command_starts():
                           capture_output=True, text=True, check=False, timeout=60)  # fmt: skip
     assert done.returncode == 0
     assert done.stdout.startswith("unmix ")
+
+
+def test_the_package_runs_as_a_module():
+    run = subprocess.run([sys.executable, "-m", "unmix", "--version"], capture_output=True, text=True, check=True)
+    assert run.stdout.startswith("unmix ")
