@@ -7,6 +7,7 @@ from dataclasses import dataclass, field
 
 import numpy as np
 
+from unmix.diagnose.constraints import Check, broken
 from unmix.kernels import FloatArray
 
 #: the three verdicts, from good to bad
@@ -44,6 +45,9 @@ _AIR = (
     (1300.0, 2000.0, 14.0, 3, "Water vapour"),
     (3500.0, 3950.0, 14.0, 3, "Water vapour"),
 )
+
+#: so many times its limit, the test of a constraint says that the answer misleads
+_BROKEN = 3.0
 
 #: bands named in a reason; the rest are counted
 _NAMED_BANDS = 3
@@ -111,6 +115,7 @@ class Evidence:
     harm: FloatArray = field(default_factory=lambda: np.zeros(0))
     negative: FloatArray = field(default_factory=lambda: np.zeros(0))
     groups: list[tuple[float, list[int]]] = field(default_factory=list)
+    checks: list[Check] = field(default_factory=list)
 
 
 def judge(evidence: Evidence, words: Words) -> tuple[str, str]:
@@ -137,6 +142,8 @@ def judge(evidence: Evidence, words: Words) -> tuple[str, str]:
         *_saturation(evidence),
         *_misfit(evidence, words),
         *_negative(evidence, words),
+        *[(2 if abs(check.score) > _BROKEN * check.limit else 1, text)
+          for check, text in broken(evidence.checks, words.amount)],
         *_noise(evidence),
     ]
     if not findings:
@@ -169,7 +176,8 @@ def _confusion(evidence: Evidence, words: Words) -> list[tuple[int, str]]:
             continue
         share = float(np.max(half)) / total if total > 0 else float("inf")
         worst = words.components[members[int(np.argmax(half))]]
-        if index >= _EXCHANGEABLE:
+        # what was given about the amounts may tell apart what the spectra do not; the intervals know
+        if index >= _EXCHANGEABLE and not evidence.checks:
             found.append((2, f"{who} cannot be told apart in these channels ({tail}){_exchange(index)}."))
         elif share > _DOUBTFUL_SHARE:
             hardly, grade = ("can hardly", 1) if share <= _UNSUPPORTED_SHARE else ("cannot", 2)

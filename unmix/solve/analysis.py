@@ -22,7 +22,6 @@ def analyse(
     weight: FloatArray,
     signal: FloatArray,
     free: FloatArray,
-    pure_uncertainty: FloatArray,
     settings: Settings,
     progress: Progress | None = None,
     n_baseline: int | None = None,
@@ -38,8 +37,6 @@ def analyse(
     signal : ndarray, shape (channels, components)
         Pure spectra per unit amount.
     free : ndarray, shape (channels, baseline terms)
-    pure_uncertainty : ndarray, shape (components,)
-        Relative standard uncertainty of each pure spectrum.
     settings : Settings
     progress : callable, optional
     n_baseline : int, optional
@@ -65,7 +62,7 @@ def analyse(
         groups = dependent_groups(design_figures(signal[used] * scale, free[used] * scale), k)
         for row in rows:
             answer.groups[row] = groups
-        solver = Pattern(signal, free, shared, pure_uncertainty, settings, n_baseline)
+        solver = Pattern(signal, free, shared, settings, n_baseline)
         for start in range(0, rows.size, CHUNK):
             part = rows[start : start + CHUNK]
             solver.solve(np.where(used, y[part], 0.0), part, answer)

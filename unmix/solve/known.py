@@ -5,7 +5,8 @@ pipelines stands in ``estimator``.
 """
 
 import json
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
+from dataclasses import replace
 from functools import partial
 from typing import TYPE_CHECKING, Any
 
@@ -19,12 +20,21 @@ from unmix.errors import InputError, listed
 from unmix.prepare.axis import common_axis, select_regions
 from unmix.provenance import provenance
 from unmix.solve.analysis import Progress
+from unmix.solve.constraints import read_constraints
 from unmix.solve.learnt import quantify_learnt
 from unmix.solve.model import KnownModel
-from unmix.solve.options import check_baseline, check_flag, check_level, noise_of_channels
+from unmix.solve.options import (
+    check_baseline,
+    check_dilution,
+    check_flag,
+    check_level,
+    check_share,
+    noise_of_channels,
+)
 from unmix.solve.passes import noise_model as models
 from unmix.solve.paths import path_of, scale_to_path
 from unmix.solve.result import assemble, check_coordinates
+from unmix.solve.uncertainty import Scale
 from unmix.spectra import as_absorbance, as_pure, rows_of, spectral_dim
 
 if TYPE_CHECKING:
@@ -49,6 +59,10 @@ def quantify(
     noise: Any = None,
     noise_model: str | None = None,
     path_length: Any = None,
+    constraints: Mapping[str, Any] | None = None,
+    path_uncertainty: float = 0.0,
+    dilution: float = 1.0,
+    dilution_uncertainty: float = 0.0,
     method: "Method | None" = None,
     library: Any = None,
     progress: Progress | None = None,
@@ -62,7 +76,8 @@ def quantify(
     pure : DataArray, dims (component, spectral)
         Pure spectra. ``attrs["per"]`` is the unit amount; absorptivity is per unit amount and path (per cm unless
         ``per`` names another length), absorbance is taken as that of one unit amount at the samples' path. The
-        coordinate ``relative_uncertainty`` may say how well each is known. Interpolated to the samples' channels.
+        coordinate ``relative_uncertainty`` may say how well each is known, the coordinate ``noise`` the standard
+        deviation of its channels. Interpolated to the samples' channels.
         A Dataset from ``learn_pure`` brings its own metric and errors; ``baseline`` and ``noise`` then play no part.
     nonnegative : bool
         Whether amounts are bounded at zero.
@@ -81,6 +96,16 @@ def quantify(
     path_length : float, str or sequence, optional
         Of the samples: centimetres or a text such as ``"25 um"``, one for all or one each. Takes precedence over
         the coordinate ``path_length``.
+    constraints : mapping, optional
+        What is known about the amounts, in their unit. ``sum``: of all; ``fixed``: component to amount; either may be
+        a pair (value, standard uncertainty). ``upper``: component to largest amount. ``ratio``: pair of components,
+        or ``"a:b"``, to the ratio of the first to the second. Each is tested against the spectra.
+    path_uncertainty : float
+        Relative standard uncertainty of the path length.
+    dilution : float
+        By how much the samples were diluted; amounts are those before it.
+    dilution_uncertainty : float
+        Relative standard uncertainty of the dilution.
     method : Method, optional
         Preparation that samples and pure spectra pass alike, once they are on common channels; every step must keep
         Beer-Lambert additivity. Settings that it holds take the place of the options above.
@@ -93,7 +118,8 @@ def quantify(
     -------
     Dataset
         ``concentration``, ``standard_uncertainty``, ``lower``, ``upper``, ``detection_limit`` and more over
-        (sample, component); ``fitted``, ``residual`` over (sample, spectral); ``verdict`` and ``reason`` over
+        (sample, component), ``contribution`` to the standard uncertainty over (sample, component, source);
+        ``fitted``, ``residual`` over (sample, spectral); ``verdict`` and ``reason`` over
         sample. Attributes hold assumptions, notes and provenance.
 
     Raises
@@ -118,22 +144,20 @@ def quantify(
     ['8.86e-03', '3.60e-02']
     """
     options = {"nonnegative": nonnegative, "baseline": baseline, "regions": regions, "level": level, "noise": noise,
-               "noise_model": noise_model, "path_length": path_length}  # fmt: skip
+               "noise_model": noise_model, "path_length": path_length, "constraints": constraints,
+               "path_uncertainty": path_uncertainty, "dilution": dilution,
+               "dilution_uncertainty": dilution_uncertainty}  # fmt: skip
     if method is not None and method.solver:
         options |= method.settings_for("quantify", options)
         return quantify(spectra, pure, method=type(method)(method.steps, method.name), library=library,
                         progress=progress, **options)  # fmt: skip
     if is_chunked(spectra):
         return _by_block(spectra, pure, {**options, "method": method, "library": library})
-    check_baseline(baseline)
-    check_level(level)
-    check_flag("nonnegative", nonnegative)
+    scale = _check(options)
     if isinstance(pure, xr.Dataset):
-        if method is not None:
-            raise InputError("a method cannot prepare what was learnt already",
-                             accepted="prepare the standards before learn_pure, and the samples alike")  # fmt: skip
+        _refuse_with_learnt(method, constraints)
         return quantify_learnt(spectra, pure, nonnegative=nonnegative, level=level, regions=regions,
-                               path_length=path_length, progress=progress)  # fmt: skip
+                               path_length=path_length, dilution=dilution, scale=scale, progress=progress)  # fmt: skip
     samples, assumptions = as_absorbance(spectra, name="spectra")
     known, more = as_absorbance(as_pure(pure), name="pure")
     samples = check_coordinates(samples)
@@ -149,15 +173,21 @@ def quantify(
     if noise is None and known.shape[1] < FEW:
         more.append(f"with {known.shape[1]} channels the noise is taken as independent from channel to channel; where "
                     "neighbours share it, as after smoothing, the intervals are too narrow")  # fmt: skip
-    paths = path_of(given, known, path_length)
+    paths = path_of(given, known, path_length).diluted(dilution)
+    asked = read_constraints(constraints, known["component"].values.tolist(), nonnegative=nonnegative)
+    if asked is not None:
+        more += asked.sentences(paths.amount_unit)
+        asked = replace(asked, scale=paths.factor)
     model = models(noise_model, measured_as_transmittance=samples.attrs.get("measured_as") == "transmittance")
     axis = samples[spectral_dim(samples)]
     kept = None if sd is None else sd.sel({str(axis.name): axis}).values
     scans = kept if kept is not None and kept.ndim == 2 else None
     solver = KnownModel(scale_to_path(known, paths), axis.values, baseline=baseline, nonnegative=nonnegative,
                         level=level, noise=kept if scans is None else None, noise_model=model, scans=scans,
-                        relative_noise=None if gain is None else gain.sel({str(axis.name): axis}).values)  # fmt: skip
-    result = assemble(samples, known, solver, paths, progress, None if library is None else _beside(library, samples))
+                        relative_noise=None if gain is None else gain.sel({str(axis.name): axis}).values,
+                        constraints=asked)  # fmt: skip
+    result = assemble(samples, known, solver, paths, progress, None if library is None else _beside(library, samples),
+                      scale)  # fmt: skip
     options |= {"noise": noise if scans is None else "repeated scans", "noise_model": model,
                 "method": "" if method is None else method.to_text()}  # fmt: skip
     return result.assign_attrs(
@@ -168,6 +198,24 @@ def quantify(
         notes=json.dumps(notes + json.loads(given.attrs.get("notes", "[]"))),
         **provenance("quantify", options, spectra=given, pure=pure),
     )
+
+
+def _check(options: Mapping[str, Any]) -> Scale:
+    """Refuse options out of range; the uncertainties of path and dilution."""
+    check_baseline(options["baseline"])
+    check_level(options["level"])
+    check_flag("nonnegative", options["nonnegative"])
+    check_dilution(options["dilution"])
+    return Scale(*(check_share(name, options[name]) for name in Scale._fields))
+
+
+def _refuse_with_learnt(method: Any, constraints: Any) -> None:
+    if method is not None:
+        raise InputError("a method cannot prepare what was learnt already",
+                         accepted="prepare the standards before learn_pure, and the samples alike")  # fmt: skip
+    if constraints:
+        raise InputError("constraints are given with learnt pure spectra, whose errors were found without them",
+                         accepted="leave them out, or give pure spectra as a DataArray")  # fmt: skip
 
 
 def _by_block(spectra: xr.DataArray, pure: Any, options: dict[str, Any]) -> xr.Dataset:

@@ -32,6 +32,7 @@ from unmix.solve.answer import Answer
 from unmix.solve.options import check_level
 from unmix.solve.paths import path_of, scale_to_path
 from unmix.solve.result import assemble, check_coordinates
+from unmix.solve.uncertainty import SOURCES, Inputs, Scale
 from unmix.spectra import as_absorbance
 
 
@@ -86,7 +87,7 @@ class LearntModel:
         y: FloatArray,
         used: BoolArray,
         *,
-        pure_uncertainty: FloatArray | float = 0.0,
+        inputs: Inputs | None = None,
         resolution: float = 1e-12,  # noqa: ARG002  errors of standards are far above rounding
         detect_saturation: bool = False,
         progress: Progress | None = None,
@@ -112,8 +113,26 @@ class LearntModel:
             done += rows.size
             if progress:
                 progress(done)
-        answer.standard_uncertainty[:] = np.hypot(answer.standard_uncertainty, answer.concentration * pure_uncertainty)
+        if inputs is not None:
+            self._add(inputs, answer)
         return answer
+
+    def _add(self, inputs: Inputs, answer: Answer) -> None:
+        """Uncertainty of path and dilution; that of the pure spectra is in the errors of the standards."""
+        amount = np.abs(answer.concentration)
+        for name, size in (("path length", inputs.path), ("dilution", inputs.dilution)):
+            answer.contribution[..., SOURCES.index(name)] = amount * size
+        more = amount * np.hypot(inputs.path, inputs.dilution)
+        if not more.any():
+            return
+        before = answer.standard_uncertainty.copy()
+        answer.standard_uncertainty[:] = np.hypot(before, more)
+        with np.errstate(invalid="ignore", divide="ignore"):
+            grown = np.where(before > 0, answer.standard_uncertainty / before, 1.0)
+        answer.lower[:] = answer.concentration - grown * (answer.concentration - answer.lower)
+        answer.upper[:] = answer.concentration + grown * (answer.upper - answer.concentration)
+        if self.nonnegative:
+            answer.lower[:] = np.maximum(answer.lower, 0.0)
 
     def _reach(self, learnt: Learnt, used: BoolArray) -> FloatArray:
         """Standard uncertainty of each amount for a floor of 1, which grows as channels are lost."""
@@ -144,6 +163,10 @@ class LearntModel:
         answer.upper[rows] = ends.upper + harm
         answer.critical_level[rows], answer.detection_limit[rows] = found.critical, found.detection
         answer.quantification_limit[rows] = found.quantification
+        parts = np.zeros((*reported.shape, len(SOURCES)))
+        parts[..., SOURCES.index("between samples")] = spread
+        parts[..., SOURCES.index("unexplained bands")] = harm / reach
+        answer.contribution[rows], answer.trust[rows] = parts, np.min(self.errors.freedom)
         answer.misfit_harm[rows] = harm
         answer.negative[rows], answer.unbounded[rows] = 0.0, reported
         answer.baseline[rows] = 0.0
@@ -180,6 +203,8 @@ def quantify_learnt(
     level: float,
     regions: Any,
     path_length: Any,
+    dilution: float,
+    scale: Scale,
     progress: Progress | None,
 ) -> xr.Dataset:
     """Run ``quantify`` with pure spectra from ``learn_pure``.
@@ -202,15 +227,16 @@ def quantify_learnt(
     k = learnt.sizes["component"]
     samples, rows, notes = common_axis(samples, _stacked(learnt))
     known = rows.isel(component=slice(0, k)).assign_attrs(rows.attrs)
-    paths = path_of(given, known, path_length)
+    paths = path_of(given, known, path_length).diluted(dilution)
     pure = scale_to_path(known, paths)
     errors = ErrorModel(*(learnt[f"error_{name}"].values for name in ("absolute", "relative", "freedom")))
     errors = errors._replace(absolute=errors.absolute * paths.weight)
     solver = LearntModel(pure, rows.values[k:], float(learnt["floor"]), errors, float(learnt["score_limit"]),
                            float(learnt["residual_limit"]), level, nonnegative)  # fmt: skip
     n = learnt.sizes["sample"]
-    result = assemble(samples, known, solver, paths, progress)
-    settings = {"nonnegative": nonnegative, "level": level, "path_length": path_length}
+    result = assemble(samples, known, solver, paths, progress, scale=scale)
+    settings = {"nonnegative": nonnegative, "level": level, "path_length": path_length, "dilution": dilution,
+                **scale._asdict()}  # fmt: skip
     return result.assign_attrs(
         kind="quantify",
         level=level,

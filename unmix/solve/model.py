@@ -10,7 +10,9 @@ from unmix.kernels.linalg import polynomial_terms
 from unmix.kernels.noise import noise_of_scans
 from unmix.solve.analysis import Progress
 from unmix.solve.answer import Answer, Settings
+from unmix.solve.constraints import Constraints
 from unmix.solve.passes import Light, solve
+from unmix.solve.uncertainty import Inputs
 
 
 class Solver(Protocol):
@@ -37,7 +39,7 @@ class Solver(Protocol):
         y: FloatArray,
         used: BoolArray,
         *,
-        pure_uncertainty: FloatArray | float = 0.0,
+        inputs: Inputs | None = None,
         resolution: float = 1e-12,
         detect_saturation: bool = False,
         progress: Progress | None = None,
@@ -65,6 +67,8 @@ class KnownModel:
         Repeated scans of one sample, from which level and correlation of the noise are taken.
     relative_noise : ndarray, shape (channels,), optional
         How the noise of one channel compares with that of others, where its level is not known.
+    constraints : Constraints, optional
+        What is known about the amounts.
     """
 
     def __init__(
@@ -79,6 +83,7 @@ class KnownModel:
         noise_model: str,
         scans: FloatArray | None = None,
         relative_noise: FloatArray | None = None,
+        constraints: Constraints | None = None,
     ) -> None:
         self.pure = pure
         self.free = polynomial_terms(np.asarray(axis, dtype=float), baseline)
@@ -87,6 +92,7 @@ class KnownModel:
         self.noise: FloatArray | None = None if noise is None else np.asarray(noise, dtype=float)
         self.noise_model = noise_model
         self.relative_noise = relative_noise
+        self.constraints = constraints
         self.scans = None if scans is None else noise_of_scans(scans, self.free)
         if self.scans is not None:
             self.noise = np.asarray(self.scans.channel)
@@ -96,7 +102,7 @@ class KnownModel:
         y: FloatArray,
         used: BoolArray,
         *,
-        pure_uncertainty: FloatArray | float = 0.0,
+        inputs: Inputs | None = None,
         resolution: float = 1e-12,
         detect_saturation: bool = False,
         progress: Progress | None = None,
@@ -108,8 +114,8 @@ class KnownModel:
         y : ndarray, shape (spectra, channels)
         used : ndarray of bool, shape (spectra, channels)
             Channels that count.
-        pure_uncertainty : float or ndarray, shape (components,)
-            Relative standard uncertainty of the pure spectra.
+        inputs : Inputs, optional
+            Uncertainties of pure spectra, path and dilution.
         resolution : float
             Rounding of the numbers relative to the largest of a spectrum, below which nothing is a misfit.
         detect_saturation : bool
@@ -126,12 +132,11 @@ class KnownModel:
         if detect_saturation:
             bent, plateau = saturated(np.where(counts, y, np.nan))
         settings = Settings(self.level, self.nonnegative, known_noise=self.noise is not None, scans=self.scans,
-                            resolution=resolution)  # fmt: skip
-        relative = np.broadcast_to(np.asarray(pure_uncertainty, dtype=float), (self.pure.shape[0],))
+                            resolution=resolution, constraints=self.constraints, inputs=inputs)  # fmt: skip
         noise: FloatArray | float = 1.0 if self.relative_noise is None else self.relative_noise
         if self.noise is not None:
             noise = self.noise
         if self.scans is not None:
             noise = self.scans.innovation
-        return solve(y, counts, noise, self.pure.T, self.free, relative, settings,
+        return solve(y, counts, noise, self.pure.T, self.free, settings,
                      Light(self.noise_model, detect_saturation, bent, plateau), progress)  # fmt: skip

@@ -43,6 +43,20 @@ def check_flag(name: str, value: Any) -> None:
         raise InputError(f"{name} is {value!r}", accepted="give True or False")
 
 
+def check_share(name: str, value: Any) -> float:
+    """A relative standard uncertainty; raise InputError unless it is a number from 0 to below 1."""
+    if isinstance(value, bool) or not isinstance(value, (int, float, np.number)) or not 0 <= value < 1:
+        raise InputError(f"{name} is {value!r}", accepted="give a relative standard uncertainty, such as 0.01 for 1%")
+    return float(value)
+
+
+def check_dilution(value: Any) -> None:
+    """Raise InputError unless the dilution is a number from 1."""
+    if isinstance(value, bool) or not isinstance(value, (int, float, np.number)) or not 1 <= value < np.inf:
+        raise InputError(f"dilution is {value!r}",
+                         accepted="give the volume after it over that before it, such as 10")  # fmt: skip
+
+
 def noise_of_channels(noise: Any, spectra: xr.DataArray) -> xr.DataArray | None:
     """Known noise on the channels of the spectra as given; None stays None.
 

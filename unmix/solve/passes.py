@@ -89,7 +89,6 @@ def solve(
     noise: FloatArray | float,
     signal: FloatArray,
     free: FloatArray,
-    pure_uncertainty: FloatArray,
     settings: Settings,
     light: Light,
     progress: Progress | None = None,
@@ -102,7 +101,7 @@ def solve(
     used : ndarray of bool, shape (spectra, channels)
     noise : float or ndarray, shape (channels,)
         Standard deviation of a channel in the light of a clear sample; 1 where unknown.
-    signal, free, pure_uncertainty, settings, progress
+    signal, free, settings, progress
         As for :func:`unmix.solve.analysis.analyse`.
     light : Light
 
@@ -115,14 +114,14 @@ def solve(
     growth = _GROWTH[light.model]
     quiet = growth == 0 and not np.isfinite(light.plateau).any()
     answer = analyse(
-        y, np.where(straight, weight, 0.0), signal, free, pure_uncertainty, settings, progress if quiet else None
+        y, np.where(straight, weight, 0.0), signal, free, settings, progress if quiet else None
     )
     even = weight * 10.0 ** (-growth * np.clip(np.nan_to_num(answer.fitted), 0.0, 6.0))
     spikes = _spikes(y, straight, answer.fitted, even) & ~answer.blank[:, None]
     used, straight = used & ~spikes, straight & ~spikes
     for spiked in np.flatnonzero(spikes.any(axis=1)):
         row = np.where(straight[spiked], weight[spiked], 0.0)[None]
-        one = analyse(y[spiked : spiked + 1], row, signal, free, pure_uncertainty, settings)
+        one = analyse(y[spiked : spiked + 1], row, signal, free, settings.of(int(spiked)))
         answer.put(int(spiked), one)
     answer.spikes[:] = spikes.sum(axis=1)
     answer.residual_growth[:] = _residual_growth(y, straight, answer.fitted)
@@ -133,7 +132,7 @@ def solve(
         if light.bends and np.isfinite(answer.noise_level[i]):
             stray = _stray_of(i, y, used, columns, answer, light)
         if stray or (growth > 0 and np.isfinite(answer.noise_level[i])):
-            one = _again(y[i], weight[i], stray, growth, columns, free.shape[1], pure_uncertainty, settings, answer, i)
+            one = _again(y[i], weight[i], stray, growth, columns, free.shape[1], settings.of(i), answer, i)
             answer.put(i, one)
             answer.spikes[i] = spikes[i].sum()
             answer.stray_light[i] = stray
@@ -150,7 +149,6 @@ def _again(
     growth: float,
     columns: FloatArray,
     n_free: int,
-    pure_uncertainty: FloatArray,
     settings: Settings,
     answer: Answer,
     i: int,
@@ -167,11 +165,11 @@ def _again(
     if (row[~too_dark] != 0).sum() > columns.shape[1]:
         row = np.where(too_dark, 0.0, row)
     if not stray:
-        return analyse(y[None], row[None], signal, free, pure_uncertainty, settings)
+        return analyse(y[None], row[None], signal, free, settings)
     bent = np.where(_with_stray(dark, stray) > -np.log10(stray) - _BENT, 0.0, row)
     row = bent if (bent != 0).sum() > columns.shape[1] + 1 else row
     with_stray = np.hstack([free, (stray * (10.0**dark - 1.0))[:, None]])
-    one = analyse(_without_stray(y[None], stray), row[None], signal, with_stray, pure_uncertainty, settings,
+    one = analyse(_without_stray(y[None], stray), row[None], signal, with_stray, settings,
                   n_baseline=n_free)  # fmt: skip
     one.fitted[0] = _with_stray(one.fitted[0], stray)
     return one

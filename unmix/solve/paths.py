@@ -1,6 +1,6 @@
 """Path lengths: how the signal of a pure spectrum scales with the path of a sample."""
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Any
 
 import numpy as np
@@ -31,6 +31,10 @@ class Paths:
     weight: FloatArray
     amount_unit: str
     assumptions: list[str]
+
+    def diluted(self, dilution: float) -> "Paths":
+        """The same for amounts before the samples were diluted."""
+        return replace(self, factor=self.factor / dilution)
 
 
 def path_of(samples: xr.DataArray, pure: xr.DataArray, path_length: Any) -> Paths:

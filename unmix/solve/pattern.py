@@ -22,6 +22,8 @@ from unmix.kernels import FloatArray, IntArray
 from unmix.kernels.gls import Design, GlsFit, fit, independent_stride, make_design
 from unmix.kernels.noise import ENOUGH, short_correlation
 from unmix.solve.answer import Answer, Settings
+from unmix.solve.constrained import constrain
+from unmix.solve.uncertainty import SOURCES, Inputs, Sensitivity, combine, noise_of_pure
 
 #: the limit of the misfit score grows by this where a correlation was estimated, since the estimate is not exact
 #: (set so that right models are flagged in at most 2% of the cases; table in DEVELOPERS.md)
@@ -37,7 +39,6 @@ class Pattern:
     free : ndarray, shape (channels, baseline terms)
     weight : ndarray, shape (channels,)
         Zero on channels that do not count.
-    pure_uncertainty : ndarray, shape (components,)
     settings : Settings
     n_baseline : int, optional
         How many of the free columns, from the first, are baseline; all by default.
@@ -48,12 +49,12 @@ class Pattern:
         signal: FloatArray,
         free: FloatArray,
         weight: FloatArray,
-        pure_uncertainty: FloatArray,
         settings: Settings,
         n_baseline: int | None = None,
     ) -> None:
         self.settings = settings
-        self.pure_uncertainty = pure_uncertainty
+        k = signal.shape[1]
+        self.inputs = settings.inputs or Inputs(np.zeros(k), np.zeros(k))
         self.columns = np.hstack([free, signal])
         self.n_free = free.shape[1]
         self.n_baseline = self.n_free if n_baseline is None else n_baseline
@@ -132,6 +133,12 @@ class Pattern:
         sigma = np.ones(rows.size) if settings.known_noise else np.maximum(solved.sigma, rounding)
         answer.blank[rows] = solved.sigma <= rounding
         length, widening, trust = self._worth(solved, shared, freedom)
+        sensitivity, checks = Sensitivity(solved.solution[:, f:]), None
+        if settings.constraints is not None:
+            made = constrain(solved, shared.design, self.columns[::stride], settings.constraints, rows, sigma, trust,
+                             nonnegative=settings.nonnegative)  # fmt: skip
+            solved, checks = made.solved, made.checks
+            sensitivity = Sensitivity(solved.solution[:, f:], made.response, made.given)
         relative = np.linalg.norm(solved.factor[:, f:], axis=2)
         with np.errstate(invalid="ignore"):
             at_zero = np.where(np.isinf(relative), np.inf, sigma[:, None] * relative)
@@ -140,12 +147,21 @@ class Pattern:
         scores, bands = shared.misfit(solved, sigma, limit)
         harm, structured = _harm(solved, shared, bands, f)
         at_zero = at_zero * widening[:, None]
-        spread = np.sqrt(np.maximum(at_zero, structured) ** 2 + (reported * self.pure_uncertainty) ** 2)
-        ends = interval(amounts, spread, trust, level=settings.level, reported=reported,
+        pure_noise = noise_of_pure(solved, shared.design.weight, reported, self.inputs.pure_noise, sigma,
+                                   known=settings.known_noise)  # fmt: skip
+        whole = combine(at_zero, structured, trust, solved.factor[:, f:], sensitivity, self.inputs, pure_noise)
+        spread = whole.spread
+        ends = interval(amounts, spread, whole.freedom, level=settings.level, reported=reported,
                         nonnegative=settings.nonnegative)  # fmt: skip
         found = limits(at_zero, trust)
         answer.concentration[rows] = reported + 0.0  # no negative zero
-        answer.standard_uncertainty[rows] = np.sqrt(spread**2 + (harm / quantile(0.5 + settings.level / 2, trust)) ** 2)
+        by_bands = harm / quantile(0.5 + settings.level / 2, trust)
+        answer.standard_uncertainty[rows] = np.hypot(spread, by_bands)
+        whole.contribution[..., SOURCES.index("unexplained bands")] = np.hypot(
+            whole.contribution[..., SOURCES.index("unexplained bands")], by_bands
+        )
+        answer.contribution[rows], answer.correlation[rows] = whole.contribution, whole.correlation
+        answer.trust[rows] = trust[:, 0]
         lower = ends.lower - harm
         answer.lower[rows] = np.maximum(lower, 0.0) if settings.nonnegative else lower
         answer.upper[rows] = ends.upper + harm
@@ -159,6 +175,8 @@ class Pattern:
         answer.noise_level[rows] = _channel_noise(solved) * float(np.median(1.0 / self.weight[self.weight != 0]))
         answer.noise_correlation_length[rows] = length * stride
         answer.freedom[rows] = freedom
+        for row, check in zip(rows, checks or [], strict=bool(checks)):
+            answer.checks[row] = check
         answer.misfit_z[rows], answer.misfit_limit[rows] = scores, limit
         for row, one in zip(rows, bands, strict=True):
             if one is not None:

@@ -15,6 +15,7 @@ from unmix.solve.answer import Answer
 from unmix.solve.hints import best_addition
 from unmix.solve.model import Solver
 from unmix.solve.paths import Paths
+from unmix.solve.uncertainty import SOURCES, Inputs, Scale
 from unmix.spectra import rows_of, spectral_dim
 from unmix.units import SPECTRAL_UNITS
 
@@ -48,7 +49,8 @@ RESERVED = frozenset({
     "noise_correlation_length", "misfit_z", "misfit_limit", "stray_light", "spikes", "channels_used",
     "channels_missing", "channels_saturated", "effective_channels", "lack_of_fit", "path_factor", "verdict",
     "reason", "suggestion", "misfit_position", "misfit_width", "misfit_height", "misfit_score", "pure_signal",
-    "variance_inflation", "selectivity", "confused_with", "condition_index", "component",
+    "variance_inflation", "selectivity", "confused_with", "condition_index", "component", "contribution", "correlation",
+    "degrees_of_freedom", "source", "component_2",
 })  # fmt: skip
 
 _FIGURES = {
@@ -68,6 +70,7 @@ def assemble(
     paths: Paths,
     progress: Progress | None,
     library: xr.DataArray | None = None,
+    scale: Scale | None = None,
 ) -> xr.Dataset:
     """Run the estimator on labelled samples and label the answer.
 
@@ -82,6 +85,8 @@ def assemble(
     progress : callable or None
     library : DataArray, dims (component, spectral), optional
         Spectra on the same channels, among which a missing component may be.
+    scale : Scale, optional
+        Uncertainty of the path and dilution.
 
     Returns
     -------
@@ -92,11 +97,12 @@ def assemble(
     present = np.isfinite(rows)
     usable = np.isfinite(solver.pure).all(axis=0)
     given = present & usable
-    uncertainty = _relative_uncertainty(pure)
+    scale = Scale() if scale is None else scale
+    inputs = Inputs(_along_pure(pure, "relative_uncertainty"), _along_pure(pure, "noise") / paths.weight,
+                    scale.path_uncertainty, scale.dilution_uncertainty)  # fmt: skip
     bends = samples.attrs.get("quantity") == "absorbance" and "prepared" not in samples.attrs
-    answer = solver.analyse(rows, given, pure_uncertainty=uncertainty,
-                               resolution=1e-6 if single else 1e-12,
-                               detect_saturation=bends, progress=progress)  # fmt: skip
+    answer = solver.analyse(rows, given, inputs=inputs, resolution=1e-6 if single else 1e-12,
+                            detect_saturation=bends, progress=progress)  # fmt: skip
     _per_path(answer, paths.factor)
     words = Words([str(c) for c in pure["component"].values], paths.amount_unit, SPECTRAL_UNITS[spectral_dim(samples)])
     lost_light = samples.attrs.get("measured_as") == "transmittance"
@@ -143,15 +149,16 @@ def check_coordinates(samples: xr.DataArray) -> xr.DataArray:
     return samples
 
 
-def _relative_uncertainty(pure: xr.DataArray) -> FloatArray:
-    if "relative_uncertainty" not in pure.coords:
+def _along_pure(pure: xr.DataArray, name: str) -> FloatArray:
+    """Uncertainties that stand beside the pure spectra; zero where none are given."""
+    if name not in pure.coords:
         return np.zeros(pure.sizes["component"])
-    given: FloatArray = np.asarray(pure["relative_uncertainty"].values, dtype=float)
+    given: FloatArray = np.asarray(pure[name].values, dtype=float)
     bad = ~(np.isfinite(given) & (given >= 0))
     if bad.any():
         j = int(bad.argmax())
-        raise InputError(f"relative_uncertainty of pure spectrum '{pure['component'].values[j]}' is {given[j]:g}",
-                         accepted="give a standard uncertainty as a fraction, 0 where it is known exactly")  # fmt: skip
+        raise InputError(f"{name} of pure spectrum '{pure['component'].values[j]}' is {given[j]:g}",
+                         accepted="give a standard uncertainty (as a fraction, if relative), 0 where it is known exactly")  # fmt: skip
     return given
 
 
@@ -160,6 +167,7 @@ def _per_path(answer: Answer, factor: FloatArray) -> None:
     for name in _AMOUNTS:
         values = getattr(answer, name)
         values /= factor[:, None]
+    answer.contribution /= factor[:, None, None]
     for i, found in enumerate(answer.bands):
         if found is not None:
             answer.bands[i] = found._replace(shift=found.shift / factor[i])
@@ -194,6 +202,7 @@ def _evidence(answer: Answer, i: int, samples: xr.DataArray, solver: Solver, pat
         unbounded=answer.unbounded[i] / paths.factor[i],
         correlation_length=float(answer.noise_correlation_length[i]),
         groups=answer.groups[i],
+        checks=answer.checks[i],
     )
 
 
@@ -256,7 +265,11 @@ def _dataset(
         signal = np.where(used, measured, np.nan)
         misfit = 100.0 * np.sqrt(np.nansum(residual**2, axis=1) / np.nansum(signal**2, axis=1))
     data["lack_of_fit"] = over(misfit, name="Lack of fit", units="percent")
-    data["path_factor"] = over(paths.factor, name="Path in units of the pure spectra's path")
+    data["path_factor"] = over(paths.factor, name="Path in units of the pure spectra's path, over the dilution")
+    data["degrees_of_freedom"] = over(answer.trust, name="Degrees of freedom of the noise")
+    data["contribution"] = over(answer.contribution, "component", "source", units=paths.amount_unit,
+                                name="Contribution to the standard uncertainty")  # fmt: skip
+    data["correlation"] = over(answer.correlation, "component", "component_2", name="Correlation of the errors")
     data["verdict"] = over([v for v, _, _ in judged], name="Verdict", units="")
     data["reason"] = over([r for _, r, _ in judged], name="Reason for the verdict", units="")
     data["suggestion"] = over([e.suggestion for e in evidence], name="Spectrum of the library that would explain most",
@@ -264,7 +277,10 @@ def _dataset(
     data |= _band_table(evidence, over, SPECTRAL_UNITS[dim], signal_unit)
     data |= _design(pure, solver, dim, signal_unit, paths)
     coords = {name: c for name, c in samples.coords.items() if name != dim}
-    built = xr.Dataset(data, coords={**coords, "component": pure["component"].values, dim: samples[dim]})
+    built = xr.Dataset(data, coords={
+        **coords, "component": pure["component"].values, "component_2": pure["component"].values,
+        "source": list(SOURCES), dim: samples[dim],
+    })  # fmt: skip
     return built.assign_attrs(title="Composition from known pure spectra", caution=CAUTION,
                               reproducibility=REPRODUCIBILITY)  # fmt: skip
 
