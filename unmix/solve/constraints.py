@@ -134,6 +134,14 @@ def read_constraints(
     return Constraints(names, exact, loose, upper)
 
 
+def plain(given: Mapping[str, Any] | None) -> dict[str, Any] | None:
+    """Constraints as JSON can hold them: a pair of components becomes the text ``"a:b"``."""
+    if not given:
+        return None
+    return {kind: {key if isinstance(key, str) else ":".join(map(str, key)): value for key, value in entry.items()}
+            if isinstance(entry, Mapping) else entry for kind, entry in given.items()}  # fmt: skip
+
+
 def _entries(given: Mapping[str, Any], kind: str) -> Mapping[Any, Any]:
     entries = given.get(kind) or {}
     if not isinstance(entries, Mapping):

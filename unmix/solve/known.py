@@ -20,7 +20,7 @@ from unmix.errors import InputError, listed
 from unmix.prepare.axis import common_axis, select_regions
 from unmix.provenance import provenance
 from unmix.solve.analysis import Progress
-from unmix.solve.constraints import read_constraints
+from unmix.solve.constraints import plain, read_constraints
 from unmix.solve.learnt import quantify_learnt
 from unmix.solve.model import KnownModel
 from unmix.solve.options import (
@@ -189,6 +189,7 @@ def quantify(
     result = assemble(samples, known, solver, paths, progress, None if library is None else _beside(library, samples),
                       scale)  # fmt: skip
     options |= {"noise": noise if scans is None else "repeated scans", "noise_model": model,
+                "constraints": plain(constraints),
                 "method": "" if method is None else method.to_text()}  # fmt: skip
     return result.assign_attrs(
         kind="quantify",

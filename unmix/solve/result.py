@@ -158,7 +158,7 @@ def _along_pure(pure: xr.DataArray, name: str) -> FloatArray:
     if bad.any():
         j = int(bad.argmax())
         raise InputError(f"{name} of pure spectrum '{pure['component'].values[j]}' is {given[j]:g}",
-                         accepted="give a standard uncertainty (as a fraction, if relative), 0 where it is known exactly")  # fmt: skip
+                         accepted="give a standard uncertainty, as a fraction where relative, 0 if exact")  # fmt: skip
     return given
 
 
