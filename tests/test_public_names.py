@@ -9,7 +9,7 @@ import pytest
 
 import unmix
 
-NAMES = ["calibrate", "conditioning", "learn_pure", "load", "predict", "quantify", "read", "report", "save", "write"]
+NAMES = ["calibrate", "conditioning", "joint_region", "learn_pure", "load", "predict", "quantify", "read", "report", "save", "write"]
 
 
 def test_names_of_the_package():

@@ -15,6 +15,7 @@ if TYPE_CHECKING:
     from unmix.report.page import report
     from unmix.solve.calibration import calibrate
     from unmix.solve.design import conditioning
+    from unmix.solve.joint import joint_region
     from unmix.solve.known import quantify
     from unmix.solve.prediction import predict
     from unmix.solve.standards import learn_pure
@@ -26,6 +27,7 @@ _HOMES = {
     "quantify": "unmix.solve.known",
     "conditioning": "unmix.solve.design",
     "learn_pure": "unmix.solve.standards",
+    "joint_region": "unmix.solve.joint",
     "calibrate": "unmix.solve.calibration",
     "predict": "unmix.solve.prediction",
     "save": "unmix.archive",
@@ -41,6 +43,7 @@ except PackageNotFoundError:  # a source tree that was never installed
 __all__ = [
     "calibrate",
     "conditioning",
+    "joint_region",
     "learn_pure",
     "load",
     "predict",

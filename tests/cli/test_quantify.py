@@ -42,9 +42,7 @@ def test_the_path_length_scales_the_amounts(laboratory, unmix):
 
 def test_all_files_are_written_and_hold_the_same(laboratory, unmix):
     files = [f"--{kind}=out.{kind}" for kind in ("csv", "xlsx", "json", "netcdf")]
-    status, out, err = unmix(
-        "quantify", "samples", "--pure", "pure", *files, "--report", "out.html", "--quiet"
-    )
+    status, out, err = unmix("quantify", "samples", "--pure", "pure", *files, "--report", "out.html", "--quiet")
     assert status == 0
     assert out == ""
     assert err.count("wrote") == 5
@@ -59,9 +57,7 @@ def test_all_files_are_written_and_hold_the_same(laboratory, unmix):
 
 def test_an_existing_file_is_refused_before_the_work_and_replaced_when_asked(laboratory, unmix):
     (laboratory / "out.csv").write_text("mine", encoding="utf-8")
-    status, out, err = unmix(
-        "quantify", "samples", "--pure", "pure", "--csv", "out.csv", "--json", "new.json"
-    )
+    status, out, err = unmix("quantify", "samples", "--pure", "pure", "--csv", "out.csv", "--json", "new.json")
     assert status == 2
     assert out == ""
     assert "out.csv: exists already; choose another name or add --overwrite" in err
@@ -83,19 +79,14 @@ def test_bad_files_are_listed_and_the_others_answered(laboratory, unmix):
     assert any(line.startswith("unmix: empty.csv: the file is empty") for line in lines)
     assert any(line.startswith("unmix: word.csv: ") for line in lines)
     assert any(line.startswith("unmix: far.csv: ") and "share no channel" in line for line in lines)
-    refused = {
-        entry["file"]
-        for entry in json.loads((laboratory / "out.json").read_text(encoding="utf-8"))["refused"]
-    }
+    refused = {entry["file"] for entry in json.loads((laboratory / "out.json").read_text(encoding="utf-8"))["refused"]}
     assert refused == {"empty.csv", "word.csv", "far.csv"}
 
 
 def test_samples_on_several_axes_are_answered_in_one_table(laboratory, unmix, lab):
     axis = lab["axis"][20:120]
     lab["write"](laboratory / "samples" / "short.csv", axis, lab["sample"](2.0, 3.0, 9, axis))
-    status, out, _ = unmix(
-        "quantify", "samples", "--pure", "pure", "--netcdf", "out.nc", "--report", "out.html"
-    )
+    status, out, _ = unmix("quantify", "samples", "--pure", "pure", "--netcdf", "out.nc", "--report", "out.html")
     assert status == 0
     names = [line.split()[0] for line in out.splitlines() if line.startswith(("vat", "short"))]
     assert names == ["short", "vat1", "vat2"]
@@ -139,8 +130,7 @@ def test_a_path_length_in_one_file_does_not_stop_another_without(laboratory, unm
     (laboratory / "samples" / "thin.csv").write_text(text, encoding="utf-8")
     _, out, err = unmix("quantify", "samples", "--pure", "pure", "--csv", "-")
     amounts = {
-        (row["sample"], row["component"]): float(row["concentration"])
-        for row in csv.DictReader(io.StringIO(out))
+        (row["sample"], row["component"]): float(row["concentration"]) for row in csv.DictReader(io.StringIO(out))
     }
     assert amounts["thin", "azure"] == pytest.approx(4.0, abs=0.04)
     assert amounts["vat1", "azure"] == pytest.approx(6.0, abs=0.02)
@@ -203,3 +193,17 @@ def test_ctrl_c_ends_with_its_own_status_and_leaves_nothing_behind(laboratory, u
     assert status == 130
     assert "stopped by Ctrl-C" in err
     assert sorted(entry.name for entry in laboratory.iterdir()) == ["pure", "samples"]
+
+
+def test_constraints_and_uncertainties_of_path_and_dilution(laboratory, unmix):
+    (laboratory / "known.toml").write_text("sum = [10.0, 0.01]\n[upper]\nazure = 7.0\n")
+    status, out, err = unmix("quantify", "samples", "--pure", "pure", "--constraints", "known.toml", "--dilution", "2",
+                             "--path-uncertainty", "0.01", "--path-length", "1 cm", "--json", "-")  # fmt: skip
+    # the vats hold 10 and 8, diluted 20 and 16
+    assert status == 1
+    assert "The sum of all amounts was given as 10" in out
+    (laboratory / "known.toml").write_text("sum = [")
+    status, _, err = unmix("quantify", "samples", "--pure", "pure", "--constraints", "known.toml")
+    assert status == 2
+    assert "known.toml" in err
+    assert "not a file of constraints" in " ".join(err.split())

@@ -4,12 +4,13 @@ What an option means is the business of the function that it is handed to; here 
 """
 
 import re
+import tomllib
 from pathlib import Path
-from typing import Annotated
+from typing import Annotated, Any
 
 import typer
 
-from unmix.errors import InputError
+from unmix.errors import InputError, ReadError
 
 Sources = Annotated[
     list[str],
@@ -44,6 +45,19 @@ NetCdf = Annotated[
 Report = Annotated[
     Path | None,
     typer.Option("--report", metavar="FILE", help="Write a page to look at (HTML, works offline)."),
+]
+Constraints = Annotated[
+    Path | None,
+    typer.Option("--constraints", metavar="FILE", help="What is known about the amounts, as TOML."),
+]
+Dilution = Annotated[
+    float, typer.Option("--dilution", metavar="FACTOR", help="By how much the samples were diluted.")
+]
+PathUncertainty = Annotated[
+    float, typer.Option("--path-uncertainty", metavar="SHARE", help="Relative uncertainty of the path, as 0.01.")
+]
+DilutionUncertainty = Annotated[
+    float, typer.Option("--dilution-uncertainty", metavar="SHARE", help="The same of the dilution.")
 ]
 Out = Annotated[
     Path | None,
@@ -171,6 +185,23 @@ def regions_from(text: str | None) -> list[tuple[float, float]] | None:
             )
         found.append((low, high))
     return found
+
+
+def constraints_from(path: Path | None) -> dict[str, Any] | None:
+    """Read constraints from a TOML file.
+
+    Raises
+    ------
+    ReadError
+        When it cannot be read or is not TOML.
+    """
+    if path is None:
+        return None
+    try:
+        return tomllib.loads(path.read_text(encoding="utf-8"))
+    except (OSError, UnicodeDecodeError, tomllib.TOMLDecodeError) as error:
+        raise ReadError(f"is not a file of constraints ({error})", path=str(path),
+                        accepted="write TOML such as: sum = 100") from error  # fmt: skip
 
 
 def baseline_from(text: str) -> int | None:

@@ -14,6 +14,7 @@ Example:
   unmix quantify drums/*.jdx --pure pure/ --baseline 1 --report drums.html
   unmix quantify run.csv --pure pure/ --regions 1650-1800 --path-length "25 um"
   unmix quantify run.csv --pure pure/ --method derivative.toml
+  unmix quantify run.csv --pure pure/ --constraints known.toml  (sum = 100)
   unmix quantify cube.zarr --pure pure/ --out result.zarr
   unmix quantify run.csv --standards standards/ --amounts amounts.csv --report run.html
 """
@@ -39,6 +40,10 @@ def command(
     regions: options.Regions = None,
     level: options.Level = 0.95,
     path_length: options.PathLength = None,
+    path_uncertainty: options.PathUncertainty = 0.0,
+    dilution: options.Dilution = 1.0,
+    dilution_uncertainty: options.DilutionUncertainty = 0.0,
+    constraints: options.Constraints = None,
     noise: options.Noise = None,
     no_nonnegative: Annotated[
         bool,
@@ -80,6 +85,10 @@ def command(
             "regions": options.regions_from(regions),
             "level": level,
             "path_length": path_length,
+            "path_uncertainty": path_uncertainty,
+            "dilution": dilution,
+            "dilution_uncertainty": dilution_uncertainty,
+            "constraints": options.constraints_from(constraints),
             "noise": noise,
             "nonnegative": not no_nonnegative,
         }

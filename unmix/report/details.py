@@ -84,7 +84,7 @@ def _sample(view: Composition, number: int, sample: int, *, first: bool) -> Mark
     ) if drawn else None  # fmt: skip
     grid = element("div", element("div", _composition_table(view, sample), class_="scroll"),
                    element("div", verdict, _facts(view, sample)), class_="pair")  # fmt: skip
-    return element("details", summary, grid, figure, _bands_table(view, sample),
+    return element("details", summary, grid, figure, _bands_table(view, sample), _budget(view, sample),
                    id=f"s{number}-{sample}", class_="sample", open=first)  # fmt: skip
 
 
@@ -174,6 +174,32 @@ def _facts(view: Composition, sample: int) -> Markup:
     if view.per_sample("stray_light")[sample] > 0:
         facts.append(("Stray light", f"{100 * view.per_sample('stray_light')[sample]:.2g} %"))
     return element("dl", [element("div", element("dt", name), element("dd", text)) for name, text in facts])
+
+
+def _budget(view: Composition, sample: int) -> Markup | None:
+    """What each input quantity contributes to the standard uncertainty of each amount."""
+    if "contribution" not in view.data:
+        return None
+    parts = view.contribution(sample)
+    names = [str(name) for name in view.data["source"].values]
+    shown = [k for k in range(len(names)) if np.nanmax(np.nan_to_num(parts[:, k]), initial=0.0) > 0]
+    if not shown:
+        return None
+    unit = view.concentration_unit
+    titles = [*(names[k].capitalize() for k in shown), "Standard uncertainty"]
+    head = [element("th", "Component", scope="col"),
+            *(element("th", title, element("span", unit, class_="unit"), scope="col", class_="number")
+              for title in titles)]  # fmt: skip
+    whole = view.table("standard_uncertainty")[sample]
+    rows = [
+        element("tr", element("th", name_of(name), scope="row"),
+                [element("td", significant(number, 2), class_="number") for number in (*parts[j, shown], whole[j])])
+        for j, name in enumerate(view.components)
+    ]  # fmt: skip
+    caption = element("caption", "Where the uncertainty comes from: contributions, whose root sum of squares is the "
+                                 "standard uncertainty (JCGM 100)")  # fmt: skip
+    return element("div", element("table", caption, element("thead", element("tr", head)), element("tbody", rows)),
+                   class_="scroll bands")  # fmt: skip
 
 
 def _short(number: float, digits: int) -> str:

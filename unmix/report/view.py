@@ -204,6 +204,10 @@ class Composition(Result):
             return np.full(self.axis.size, np.nan)
         return np.asarray(self._flat(variable, self.dim)[sample], dtype=float)
 
+    def contribution(self, sample: int) -> FloatArray:
+        """What each input quantity contributes to the standard uncertainty of each amount, (components, sources)."""
+        return np.asarray(self._flat("contribution", "component", "source")[sample], dtype=float)
+
     def factors(self) -> FloatArray:
         """What the path length of each sample multiplies the signal of a unit amount with."""
         return self.per_sample("path_factor") if "path_factor" in self.data else np.ones(len(self))
