@@ -9,7 +9,9 @@ import pytest
 
 import unmix
 
-NAMES = ["calibrate", "conditioning", "joint_region", "learn_pure", "load", "predict", "quantify", "read", "report", "save", "write"]
+NAMES = [
+    "calibrate", "conditioning", "joint_region", "learn_pure", "load", "predict", "quantify", "read", "report", "save", "write",
+]  # fmt: skip
 
 
 def test_names_of_the_package():
