@@ -10,7 +10,8 @@ import pytest
 import unmix
 
 NAMES = [
-    "calibrate", "conditioning", "joint_region", "learn_pure", "load", "predict", "quantify", "read", "report", "save", "write",
+    "calibrate", "conditioning", "joint_region", "learn_pure", "load", "predict", "quantify", "read", "report", "save",
+    "write",
 ]  # fmt: skip
 
 
