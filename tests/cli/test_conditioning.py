@@ -12,9 +12,7 @@ def test_two_dyes_can_be_told_apart(laboratory, unmix):
 
 
 def test_two_alike_cannot(laboratory, unmix, lab):
-    lab["write"](
-        laboratory / "pure" / "twin.csv", lab["axis"], 1.001 * lab["absorptivity"]("azure"), "(g/L)-1 cm-1"
-    )
+    lab["write"](laboratory / "pure" / "twin.csv", lab["axis"], 1.001 * lab["absorptivity"]("azure"), "(g/L)-1 cm-1")
     status, out, _ = unmix("conditioning", "--pure", "pure", "--report", "out.html")
     assert status == 1
     assert "hardly told apart" in out
@@ -31,3 +29,14 @@ def test_bad_input_is_one_sentence(laboratory, unmix):
     status, _, err = unmix("conditioning", "--pure", "nowhere")
     assert status == 2
     assert err == "unmix: nowhere: there is no such file\n"
+
+
+def test_advice_for_wanted_limits(laboratory, unmix):
+    status, out, _ = unmix("conditioning", "--pure", "pure", "--noise", "0.001", "--wanted", "crimson=1e-3,azure=1e-3",
+                           "--typical", "5", "--report", "page.html")  # fmt: skip
+    assert status == 0
+    assert "co-added" in out
+    page = (laboratory / "page.html").read_text(encoding="utf-8")
+    assert "How to reach the wanted detection limits" in page
+    status, _, err = unmix("conditioning", "--pure", "pure", "--noise", "0.001", "--wanted", "crimson=much")
+    assert (status, "--wanted is" in err) == (2, True)

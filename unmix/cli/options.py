@@ -187,6 +187,30 @@ def regions_from(text: str | None) -> list[tuple[float, float]] | None:
     return found
 
 
+def amounts_from(option: str, text: str | None) -> float | dict[str, float] | None:
+    """Read one number, or ``name=number`` with commas between them.
+
+    Raises
+    ------
+    InputError
+        When it is neither.
+
+    Examples
+    --------
+    >>> amounts_from("--wanted", "acetone=0.5, water=2")
+    {'acetone': 0.5, 'water': 2.0}
+    """
+    if text is None:
+        return None
+    try:
+        if "=" not in text:
+            return float(text)
+        return {name.strip(): float(number) for name, number in (part.rsplit("=", 1) for part in text.split(","))}
+    except ValueError:
+        raise InputError(f"{option} is '{text}'",
+                         accepted="give a number, or component=number with commas between them") from None  # fmt: skip
+
+
 def constraints_from(path: Path | None) -> dict[str, Any] | None:
     """Read constraints from a TOML file.
 

@@ -150,6 +150,8 @@ def print_design(result: xr.Dataset) -> None:
     ]
     print_table(columns, rows)
     print()
+    for text in view.sentences("advice"):
+        print(wrapped(text, rest="  "))
     if "verdict" in result:
         verdict = str(result["verdict"].item())
         reason = str(result["reason"].item()) if "reason" in result else ""

@@ -117,6 +117,24 @@ def measurable(view: Result) -> Markup | None:
     return _section("trust", "Can this mixture be measured at all?", said)
 
 
+def advice(view: Result) -> Markup | None:
+    """What to change so that wanted detection limits are reached, and what each change reaches."""
+    said = view.sentences("advice")
+    if not said or "wanted" not in view.data:
+        return None
+    ways = [("as planned", "present_limit"), ("these windows alone", "window_limit"), ("more scans", "scans_limit")]
+    columns = [view.per_component(name) for _, name in (("wanted", "wanted"), *ways)]
+    best = int(np.argmin(np.abs(view.data["path_multiple"].values - view.data["recommended_path"].item())))
+    columns.append(np.asarray(view.data["path_limit"].transpose("path", "component").values[best], dtype=float))
+    titles = ["Component", "Wanted", *(name.capitalize() for name, _ in ways), "Other path"]
+    rows = [[name_of(name), *(significant(column[j], 2) for column in columns)]
+            for j, name in enumerate(view.components)]  # fmt: skip
+    unit = view.unit("present_limit")
+    table = _table(f"Detection limits with each change alone, {unit}", titles, "t" + "n" * len(columns), rows)
+    told = element("ul", [element("li", one) for one in said])
+    return _section("advice", "How to reach the wanted detection limits", told, table)
+
+
 def alikeness(view: Result) -> list[Markup]:
     """The angles between pure spectra, and the directions in which variance mixes."""
     parts = []

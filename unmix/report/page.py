@@ -144,9 +144,9 @@ def _design_parts(designs: Sequence[Result]) -> tuple[str, str, list[Any], dict[
     main: list[Any] = []
     figures = []
     for view in designs:
-        main += [background.measurable(view), background.conditioning([view])]
+        main += [background.measurable(view), background.advice(view), background.conditioning([view])]
         if all(name in view.data for name in ("pure_signal", "net_signal")):
-            figures.append(_packed_figure(view))
+            figures.append(_packed(plots.signal_traces(view), plots.signal_layout(view)))
             label = (
                 "Pure spectra of all components and, below, the part of each that nothing else can imitate"
             )
@@ -154,6 +154,11 @@ def _design_parts(designs: Sequence[Result]) -> tuple[str, str, list[Any], dict[
                 "div", "", class_="plot", data_figure=str(len(figures) - 1), role="img", aria_label=label
             )
             main.append(element("figure", plot, element("figcaption", f"{label}.")))
+        if "path_limit" in view.data:
+            figures.append(_packed(plots.limits_traces(view), plots.limits_layout(view)))
+            label = "Detection limits, as shares of those wanted, against path length and resolution"
+            plot = element("div", "", class_="plot", data_figure=str(len(figures) - 1), role="img", aria_label=label)
+            main.append(element("figure", plot, element("figcaption", f"{label}. Below the line the wish is met.")))
         main += background.alikeness(view)
     main += [background.caution(designs), background.remarks(designs), background.provenance(designs)]
     said = f"{len(designs[0].components)} components"
@@ -162,11 +167,9 @@ def _design_parts(designs: Sequence[Result]) -> tuple[str, str, list[Any], dict[
     return title, ", ".join(part for part in (said, made) if part), main, {"figures": figures}
 
 
-def _packed_figure(view: Result) -> dict[str, Any]:
-    packed = [
-        trace | {key: curves.plain(trace[key]) for key in ("x", "y")} for trace in plots.signal_traces(view)
-    ]
-    return {"data": packed, "layout": plots.signal_layout(view)}
+def _packed(traces: Sequence[dict[str, Any]], layout: dict[str, Any]) -> dict[str, Any]:
+    packed = [trace | {key: curves.plain(trace[key]) for key in ("x", "y")} for trace in traces]
+    return {"data": packed, "layout": layout}
 
 
 def _asset(name: str) -> str:

@@ -207,6 +207,67 @@ def signal_figure(result: xr.Dataset) -> go.Figure:
     return figure
 
 
+def limits_figure(result: xr.Dataset) -> go.Figure:
+    """Detection limits over those wanted, against path length and resolution.
+
+    Parameters
+    ----------
+    result : Dataset
+        From ``unmix.conditioning`` with ``wanted``.
+
+    Returns
+    -------
+    plotly Figure
+
+    Raises
+    ------
+    InputError
+        When no limits were wanted.
+    """
+    view = Result(results_of(result)[0])
+    if "path_limit" not in view.data:
+        raise InputError("the result holds no advice", accepted="give unmix.conditioning the limits that are wanted")
+    figure = go.Figure(limits_traces(view), limits_layout(view))
+    figure.layout.template = go.layout.Template()
+    return figure
+
+
+def limits_traces(view: Result) -> list[dict[str, Any]]:
+    """One curve a component in each of the two panels."""
+    wanted = view.per_component("wanted")
+    traces = []
+    for name, at, xaxis, yaxis in (("path_limit", "path_multiple", "x", "y"),
+                                   ("resolution_limit", "resolution", "x2", "y2")):  # fmt: skip
+        values = view.data[name].transpose(..., "component").values
+        x = np.asarray(view.data[at].values, dtype=float)
+        for j, component in enumerate(view.components):
+            ratio = np.where(np.isfinite(values[:, j]), values[:, j] / wanted[j], np.nan)
+            traces.append({
+                "type": "scatter", "mode": "lines", "x": x, "y": ratio, "name": figure_text(component, 22),
+                "xaxis": xaxis, "yaxis": yaxis, "legendgroup": str(j), "showlegend": xaxis == "x", "line": line_of(j),
+                "meta": {"curve": name, "component": j},
+            })  # fmt: skip
+    return traces
+
+
+def limits_layout(view: Result) -> dict[str, Any]:
+    """Axes of the figure of detection limits; the wish is the line at one."""
+    line = {"type": "line", "xref": "paper", "x0": 0, "x1": 1, "yref": "y", "y0": 1, "y1": 1,
+            "line": {"color": INK, "width": 1, "dash": "dash"}}  # fmt: skip
+    logarithmic = {"type": "log", "exponentformat": "power", "dtick": 1}
+    return {
+        "height": 420,
+        "margin": {"l": 70, "r": 20, "t": 24, "b": 52},
+        "hovermode": "x unified",
+        "xaxis": _axis("Path over the planned one", domain=[0.0, 0.56], anchor="y", **logarithmic),
+        "yaxis": _axis("Detection limit over that wanted", anchor="x", **logarithmic),
+        "xaxis2": _axis(f"Resolution ({view.unit('resolution')})", domain=[0.64, 1.0], anchor="y2", rangemode="tozero"),
+        "yaxis2": _axis("", anchor="x2", matches="y", showticklabels=False, **logarithmic),
+        "legend": {"x": 1.01, "xanchor": "left", "y": 1.0, "yanchor": "top", "bgcolor": "rgba(0,0,0,0)"},
+        "shapes": [line],
+    }
+
+
 def signal_traces(view: Result) -> list[dict[str, Any]]:
     """Pure spectra and net analyte signals, one colour a component."""
     traces = []
