@@ -187,6 +187,27 @@ def regions_from(text: str | None) -> list[tuple[float, float]] | None:
     return found
 
 
+def axis_from(text: str | None) -> list[str] | dict[str, float] | None:
+    """Read ``shift,broadening`` or ``shift=2,broadening=5``.
+
+    Raises
+    ------
+    InputError
+        When some have a bound and others not, or a bound is no number.
+
+    Examples
+    --------
+    >>> axis_from("shift"), axis_from("shift=2,stretch=1e-4")
+    (['shift'], {'shift': 2.0, 'stretch': 0.0001})
+    """
+    if text is None:
+        return None
+    if "=" not in text:
+        return [part.strip() for part in text.split(",")]
+    found = amounts_from("--axis", text)
+    return found if isinstance(found, dict) else None
+
+
 def amounts_from(option: str, text: str | None) -> float | dict[str, float] | None:
     """Read one number, or ``name=number`` with commas between them.
 

@@ -44,6 +44,10 @@ def command(
     dilution: options.Dilution = 1.0,
     dilution_uncertainty: options.DilutionUncertainty = 0.0,
     constraints: options.Constraints = None,
+    axis: Annotated[
+        str | None,
+        typer.Option("--axis", metavar="WORDS", help="Axis errors to fit: shift, stretch, broadening, or shift=2."),
+    ] = None,
     noise: options.Noise = None,
     no_nonnegative: Annotated[
         bool,
@@ -88,6 +92,7 @@ def command(
             "path_uncertainty": path_uncertainty,
             "dilution": dilution,
             "dilution_uncertainty": dilution_uncertainty,
+            "axis": options.axis_from(axis),
             "constraints": options.constraints_from(constraints),
             "noise": noise,
             "nonnegative": not no_nonnegative,

@@ -116,6 +116,8 @@ class Evidence:
     negative: FloatArray = field(default_factory=lambda: np.zeros(0))
     groups: list[tuple[float, list[int]]] = field(default_factory=list)
     checks: list[Check] = field(default_factory=list)
+    axis: dict[str, tuple[FloatArray, FloatArray, bool]] | None = None
+    like_shift: float = float("nan")
 
 
 def judge(evidence: Evidence, words: Words) -> tuple[str, str]:
@@ -146,8 +148,9 @@ def judge(evidence: Evidence, words: Words) -> tuple[str, str]:
           for check, text in broken(evidence.checks, words.amount)],
         *_noise(evidence),
     ]
-    if not findings:
-        return VERDICTS[0], _good(evidence)
+    findings += _axis(evidence, words)
+    if all(grade == 0 for grade, _ in findings):
+        return VERDICTS[0], " ".join([_good(evidence), *(text for _, text in findings)])
     findings.sort(key=lambda finding: -finding[0])
     return VERDICTS[findings[0][0]], " ".join(text for _, text in findings)
 
@@ -230,6 +233,36 @@ def _misfit(evidence: Evidence, words: Words) -> list[tuple[int, str]]:
             names = ", ".join(words.components[j] for j in bad)
             found.append((2, f"What is not explained is as large as the amount of {names}."))
     return found
+
+
+def _axis(evidence: Evidence, words: Words) -> list[tuple[int, str]]:
+    """What was found of the axis, what could not be, and a hint where nobody asked."""
+    if evidence.axis is None:
+        if np.isfinite(evidence.like_shift):
+            size = plain_number(abs(evidence.like_shift), 2)
+            return [(0, f"The residual looks like a shift of the axis by {size} {words.axis_unit}: fit the axis.")]
+        return []
+    found = []
+    for name, (values, spread, at_bound) in evidence.axis.items():
+        unit = "" if name == "stretch" else f" {words.axis_unit}"
+        known = np.isfinite(values)
+        if not known.any():
+            grade = int(bool(evidence.detected.any()))
+            found.append((grade, f"The {name} of the axis cannot be told from this spectrum and was left at zero."))
+        elif at_bound:
+            found.append((1, f"The {name} of the axis is at its bound ({_each(values)}{unit}): allow more of it, or "
+                             "doubt that it is one."))  # fmt: skip
+        else:
+            found.append((0, f"The {name} of the axis was found as {_each(values)}{unit} (standard uncertainty "
+                             f"{_each(spread)}{unit})."))  # fmt: skip
+    return found
+
+
+def _each(values: FloatArray) -> str:
+    """One number for all, or the range of several."""
+    known = values[np.isfinite(values)]
+    low, high = plain_number(float(known.min()), 2), plain_number(float(known.max()), 2)
+    return low if low == high else f"{low} to {high}"
 
 
 def _air(band: Band, bands: list[Band], unit: str) -> str:

@@ -9,6 +9,7 @@ from unmix.diagnose.constraints import Check
 from unmix.diagnose.residual import Bands
 from unmix.kernels import BoolArray, FloatArray
 from unmix.kernels.noise import KnownNoise
+from unmix.solve.axis import AxisFitter, Report
 from unmix.solve.constraints import Constraints
 from unmix.solve.uncertainty import SOURCES, Inputs
 
@@ -30,6 +31,7 @@ class Settings:
     resolution: float = 1e-12
     constraints: Constraints | None = None
     inputs: Inputs | None = None
+    axis: AxisFitter | None = None
 
     def of(self, row: int) -> "Settings":
         """The settings as the only spectrum of a batch has them."""
@@ -61,7 +63,8 @@ class Answer:
     Shapes: (spectra, components) for the amounts, (spectra, channels) for curves, (spectra,) for the rest.
     ``used`` tells the channels that the last fit of a spectrum rests on. Amounts are per unit path; ``bands`` holds
     positions and widths in channels. ``contribution`` has shape (spectra, components, ``SOURCES``), ``correlation``
-    (spectra, components, components); ``trust`` is the degrees of freedom behind the noise.
+    (spectra, components, components); ``trust`` is the degrees of freedom behind the noise, ``extra`` holds values and
+    standard uncertainties of free terms that are no baseline, ``axis`` what became of an axis fit.
     """
 
     concentration: FloatArray
@@ -93,6 +96,8 @@ class Answer:
     bands: list[Bands | None]
     groups: list[list[tuple[float, list[int]]]]
     checks: list[list[Check]]
+    extra: list[tuple[FloatArray, FloatArray]]
+    axis: list[Report | None]
 
     @classmethod
     def empty(cls, n: int, k: int, p: int) -> "Answer":
@@ -108,6 +113,8 @@ class Answer:
             bands=[None] * n,
             groups=[[] for _ in range(n)],
             checks=[[] for _ in range(n)],
+            extra=[(np.empty(0), np.empty(0)) for _ in range(n)],
+            axis=[None] * n,
         )
 
     def put(self, row: int, one: "Answer") -> None:
@@ -115,4 +122,5 @@ class Answer:
         for name in (*AMOUNTS, *CURVES, *FIGURES, "contribution", "correlation"):
             getattr(self, name)[row] = getattr(one, name)[0]
         self.used[row], self.blank[row] = one.used[0], one.blank[0]
-        self.bands[row], self.groups[row], self.checks[row] = one.bands[0], one.groups[0], one.checks[0]
+        for name in ("bands", "groups", "checks", "extra"):
+            getattr(self, name)[row] = getattr(one, name)[0]

@@ -20,6 +20,7 @@ from unmix.errors import InputError, listed
 from unmix.prepare.axis import common_axis, select_regions
 from unmix.provenance import provenance
 from unmix.solve.analysis import Progress
+from unmix.solve.axis import read_axis
 from unmix.solve.constraints import plain, read_constraints
 from unmix.solve.learnt import quantify_learnt
 from unmix.solve.model import KnownModel
@@ -63,6 +64,8 @@ def quantify(
     path_uncertainty: float = 0.0,
     dilution: float = 1.0,
     dilution_uncertainty: float = 0.0,
+    axis: str | Sequence[str] | Mapping[str, float] | None = None,
+    axis_per_component: bool = False,
     method: "Method | None" = None,
     library: Any = None,
     progress: Progress | None = None,
@@ -106,6 +109,13 @@ def quantify(
         By how much the samples were diluted; amounts are those before it.
     dilution_uncertainty : float
         Relative standard uncertainty of the dilution.
+    axis : str, list or mapping, optional
+        Errors of the axis between samples and pure spectra that are fitted with the amounts: any of 'shift',
+        'stretch', 'broadening', or these with the largest size that they may have (shift and full width of the
+        broadening in units of the axis, stretch relative). What a spectrum does not determine is left at zero and
+        said. Takes 0.03 to 0.2 s a spectrum.
+    axis_per_component : bool
+        Whether each component has its own.
     method : Method, optional
         Preparation that samples and pure spectra pass alike, once they are on common channels; every step must keep
         Beer-Lambert additivity. Settings that it holds take the place of the options above.
@@ -146,7 +156,8 @@ def quantify(
     options = {"nonnegative": nonnegative, "baseline": baseline, "regions": regions, "level": level, "noise": noise,
                "noise_model": noise_model, "path_length": path_length, "constraints": constraints,
                "path_uncertainty": path_uncertainty, "dilution": dilution,
-               "dilution_uncertainty": dilution_uncertainty}  # fmt: skip
+               "dilution_uncertainty": dilution_uncertainty, "axis": axis,
+               "axis_per_component": axis_per_component}  # fmt: skip
     if method is not None and method.solver:
         options |= method.settings_for("quantify", options)
         return quantify(spectra, pure, method=type(method)(method.steps, method.name), library=library,
@@ -155,7 +166,7 @@ def quantify(
         return _by_block(spectra, pure, {**options, "method": method, "library": library})
     scale = _check(options)
     if isinstance(pure, xr.Dataset):
-        _refuse_with_learnt(method, constraints)
+        _refuse_with_learnt(method, constraints, axis)
         return quantify_learnt(spectra, pure, nonnegative=nonnegative, level=level, regions=regions,
                                path_length=path_length, dilution=dilution, scale=scale, progress=progress)  # fmt: skip
     samples, assumptions = as_absorbance(spectra, name="spectra")
@@ -179,13 +190,14 @@ def quantify(
         more += asked.sentences(paths.amount_unit)
         asked = replace(asked, scale=paths.factor)
     model = models(noise_model, measured_as_transmittance=samples.attrs.get("measured_as") == "transmittance")
-    axis = samples[spectral_dim(samples)]
-    kept = None if sd is None else sd.sel({str(axis.name): axis}).values
+    along = samples[spectral_dim(samples)]
+    question = read_axis(axis, along.values, per_component=axis_per_component)
+    kept = None if sd is None else sd.sel({str(along.name): along}).values
     scans = kept if kept is not None and kept.ndim == 2 else None
-    solver = KnownModel(scale_to_path(known, paths), axis.values, baseline=baseline, nonnegative=nonnegative,
+    solver = KnownModel(scale_to_path(known, paths), along.values, baseline=baseline, nonnegative=nonnegative,
                         level=level, noise=kept if scans is None else None, noise_model=model, scans=scans,
-                        relative_noise=None if gain is None else gain.sel({str(axis.name): axis}).values,
-                        constraints=asked)  # fmt: skip
+                        relative_noise=None if gain is None else gain.sel({str(along.name): along}).values,
+                        constraints=asked, axis_fit=question)  # fmt: skip
     result = assemble(samples, known, solver, paths, progress, None if library is None else _beside(library, samples),
                       scale)  # fmt: skip
     options |= {"noise": noise if scans is None else "repeated scans", "noise_model": model,
@@ -210,12 +222,13 @@ def _check(options: Mapping[str, Any]) -> Scale:
     return Scale(*(check_share(name, options[name]) for name in Scale._fields))
 
 
-def _refuse_with_learnt(method: Any, constraints: Any) -> None:
+def _refuse_with_learnt(method: Any, constraints: Any, axis: Any) -> None:
     if method is not None:
         raise InputError("a method cannot prepare what was learnt already",
                          accepted="prepare the standards before learn_pure, and the samples alike")  # fmt: skip
-    if constraints:
-        raise InputError("constraints are given with learnt pure spectra, whose errors were found without them",
+    if constraints or axis:
+        what = "constraints" if constraints else "axis"
+        raise InputError(f"{what} is given with learnt pure spectra, whose errors were found without it",
                          accepted="leave them out, or give pure spectra as a DataArray")  # fmt: skip
 
 

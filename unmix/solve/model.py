@@ -10,6 +10,7 @@ from unmix.kernels.linalg import polynomial_terms
 from unmix.kernels.noise import noise_of_scans
 from unmix.solve.analysis import Progress
 from unmix.solve.answer import Answer, Settings
+from unmix.solve.axis import AxisFitter, AxisQuestion
 from unmix.solve.constraints import Constraints
 from unmix.solve.passes import Light, solve
 from unmix.solve.uncertainty import Inputs
@@ -69,6 +70,8 @@ class KnownModel:
         How the noise of one channel compares with that of others, where its level is not known.
     constraints : Constraints, optional
         What is known about the amounts.
+    axis_fit : AxisQuestion, optional
+        Which axis errors between spectra and pure spectra are fitted.
     """
 
     def __init__(
@@ -84,6 +87,7 @@ class KnownModel:
         scans: FloatArray | None = None,
         relative_noise: FloatArray | None = None,
         constraints: Constraints | None = None,
+        axis_fit: AxisQuestion | None = None,
     ) -> None:
         self.pure = pure
         self.free = polynomial_terms(np.asarray(axis, dtype=float), baseline)
@@ -93,6 +97,7 @@ class KnownModel:
         self.noise_model = noise_model
         self.relative_noise = relative_noise
         self.constraints = constraints
+        self.fitter = None if axis_fit is None else AxisFitter(pure.T, np.asarray(axis, dtype=float), axis_fit)
         self.scans = None if scans is None else noise_of_scans(scans, self.free)
         if self.scans is not None:
             self.noise = np.asarray(self.scans.channel)
@@ -132,7 +137,8 @@ class KnownModel:
         if detect_saturation:
             bent, plateau = saturated(np.where(counts, y, np.nan))
         settings = Settings(self.level, self.nonnegative, known_noise=self.noise is not None, scans=self.scans,
-                            resolution=resolution, constraints=self.constraints, inputs=inputs)  # fmt: skip
+                            resolution=resolution, constraints=self.constraints, inputs=inputs,
+                            axis=self.fitter)  # fmt: skip
         noise: FloatArray | float = 1.0 if self.relative_noise is None else self.relative_noise
         if self.noise is not None:
             noise = self.noise

@@ -128,6 +128,10 @@ def solve(
     answer.stray_light[:] = np.nan_to_num(10.0**-light.plateau)
     columns = np.hstack([free, signal])
     for i in range(y.shape[0]):
+        if settings.axis is not None and np.isfinite(answer.noise_level[i]):
+            _move_axis(i, y[i], np.where(straight[i], even[i], 0.0), free, settings, answer)
+            if answer.axis[i]:
+                continue
         stray = 0.0
         if light.bends and np.isfinite(answer.noise_level[i]):
             stray = _stray_of(i, y, used, columns, answer, light)
@@ -140,6 +144,27 @@ def solve(
         if progress and not quiet:
             progress(i + 1)
     return answer
+
+
+def _move_axis(
+    i: int, y: FloatArray, weight: FloatArray, free: FloatArray, settings: Settings, answer: Answer
+) -> None:
+    """Fit the axis of one spectrum, and the spectrum with what is uncertain about its axis as further free terms.
+
+    Where the data determine nothing of the axis, the answer stays as it is.
+    """
+    fitter = settings.axis
+    if fitter is None:
+        return
+    moved = fitter.fit(np.nan_to_num(y), weight, free)
+    if moved is None:
+        answer.axis[i] = fitter.nothing()
+        return
+    one = analyse(y[None], moved.weight[None], moved.signal, np.hstack([free, moved.columns]), settings.of(i),
+                  n_baseline=free.shape[1])  # fmt: skip
+    answer.put(i, one)
+    answer.residual_growth[i] = 1.0
+    answer.axis[i] = fitter.report(moved, *one.extra[0])
 
 
 def _again(

@@ -175,6 +175,10 @@ class Pattern:
         answer.noise_level[rows] = _channel_noise(solved) * float(np.median(1.0 / self.weight[self.weight != 0]))
         answer.noise_correlation_length[rows] = length * stride
         answer.freedom[rows] = freedom
+        beside = slice(self.n_baseline, f)
+        size_beside = sigma[:, None] * np.linalg.norm(np.nan_to_num(solved.factor[:, beside]), axis=2)
+        for i, row in enumerate(rows):
+            answer.extra[row] = solved.terms[i, beside], size_beside[i] * widening[i]
         for row, check in zip(rows, checks or [], strict=bool(checks)):
             answer.checks[row] = check
         answer.misfit_z[rows], answer.misfit_limit[rows] = scores, limit

@@ -19,6 +19,9 @@ from unmix.solve.uncertainty import SOURCES, Inputs, Scale
 from unmix.spectra import rows_of, spectral_dim
 from unmix.units import SPECTRAL_UNITS
 
+#: share of the squared residual that a shift of the axis must explain to be named
+_LIKE_SHIFT = 1.0 / 3.0
+
 #: shown wherever a result is shown
 CAUTION = (
     "A computed composition does not replace a validated method. Where a result can affect the safety of people, "
@@ -120,10 +123,24 @@ def assemble(
         evidence.blank = bool(answer.blank[i])
         above_baseline = (rows[i] - answer.baseline[i])[answer.used[i]]
         evidence.negative_share = float(np.mean(above_baseline < -0.05)) if above_baseline.size else 0.0
+        if evidence.bands and answer.axis[i] is None:
+            evidence.like_shift = _like_shift(rows[i] - answer.fitted[i], answer.fitted[i] - answer.baseline[i],
+                                              samples[spectral_dim(samples)].values, answer.used[i])  # fmt: skip
         if library is not None and evidence.bands:
             evidence.suggestion = _suggestion(rows[i] - answer.fitted[i], answer.used[i], solver, library)
         judged.append((*judge(evidence, words), evidence))
     return _dataset(samples, pure, solver, paths, answer, judged)
+
+
+def _like_shift(residual: FloatArray, signal: FloatArray, axis: FloatArray, used: BoolArray) -> float:
+    """The shift that would explain a third or more of the squared residual; NaN where none does."""
+    slope = -np.gradient(signal, axis) if axis.size > 1 else np.zeros(1)
+    slope, rest = slope[used], residual[used]
+    size = float(slope @ slope)
+    if size == 0 or not np.isfinite(size):
+        return float("nan")
+    shift = float(slope @ rest) / size
+    return shift if shift**2 * size > _LIKE_SHIFT * float(rest @ rest) else float("nan")
 
 
 def _suggestion(residual: FloatArray, used: BoolArray, solver: Solver, library: xr.DataArray) -> str:
@@ -203,6 +220,7 @@ def _evidence(answer: Answer, i: int, samples: xr.DataArray, solver: Solver, pat
         correlation_length=float(answer.noise_correlation_length[i]),
         groups=answer.groups[i],
         checks=answer.checks[i],
+        axis=answer.axis[i],
     )
 
 
@@ -274,6 +292,7 @@ def _dataset(
     data["reason"] = over([r for _, r, _ in judged], name="Reason for the verdict", units="")
     data["suggestion"] = over([e.suggestion for e in evidence], name="Spectrum of the library that would explain most",
                               units="")  # fmt: skip
+    data |= _axis_variables(answer, over, SPECTRAL_UNITS[dim])
     data |= _band_table(evidence, over, SPECTRAL_UNITS[dim], signal_unit)
     data |= _design(pure, solver, dim, signal_unit, paths)
     coords = {name: c for name, c in samples.coords.items() if name != dim}
@@ -283,6 +302,23 @@ def _dataset(
     })  # fmt: skip
     return built.assign_attrs(title="Composition from known pure spectra", caution=CAUTION,
                               reproducibility=REPRODUCIBILITY)  # fmt: skip
+
+
+def _axis_variables(answer: Answer, over: Any, unit: str) -> dict[str, Any]:
+    """What the axis fit found, where it was asked for."""
+    known = [report for report in answer.axis if report is not None]
+    if not known:
+        return {}
+    words = {"shift": "Shift of the axis", "stretch": "Stretch of the axis", "broadening": "Width of the broadening"}
+    table: dict[str, Any] = {}
+    none = np.full(answer.concentration.shape[1], np.nan)
+    for name in known[0]:
+        pairs = [(none, none, False) if report is None else report[name] for report in answer.axis]
+        units = "1" if name == "stretch" else unit
+        table[f"axis_{name}"] = over([pair[0] for pair in pairs], "component", name=words[name], units=units)
+        table[f"axis_{name}_uncertainty"] = over([pair[1] for pair in pairs], "component", units=units,
+                                                 name=f"Standard uncertainty: {words[name].lower()}")  # fmt: skip
+    return table
 
 
 def _band_table(evidence: list[Evidence], over: Any, axis_unit: str, signal_unit: str) -> dict[str, Any]:
