@@ -11,7 +11,7 @@ import unmix
 
 NAMES = [
     "calibrate", "conditioning", "joint_region", "learn_pure", "load", "predict", "quantify", "read", "report", "save",
-    "write",
+    "standard_addition", "write",
 ]  # fmt: skip
 
 

@@ -13,6 +13,7 @@ if TYPE_CHECKING:
     from unmix.archive import load, save
     from unmix.read import read, write
     from unmix.report.page import report
+    from unmix.solve.addition import standard_addition
     from unmix.solve.calibration import calibrate
     from unmix.solve.design import conditioning
     from unmix.solve.joint import joint_region
@@ -28,6 +29,7 @@ _HOMES = {
     "conditioning": "unmix.solve.design",
     "learn_pure": "unmix.solve.standards",
     "joint_region": "unmix.solve.joint",
+    "standard_addition": "unmix.solve.addition",
     "calibrate": "unmix.solve.calibration",
     "predict": "unmix.solve.prediction",
     "save": "unmix.archive",
@@ -51,6 +53,7 @@ __all__ = [
     "read",
     "report",
     "save",
+    "standard_addition",
     "write",
 ]
 

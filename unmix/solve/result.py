@@ -279,10 +279,7 @@ def _dataset(
         data["channels_used"][1].ravel() / answer.noise_correlation_length,
         name="Channels that carry independent noise", units="channels",
     )  # fmt: skip
-    with np.errstate(invalid="ignore", divide="ignore"):
-        signal = np.where(used, measured, np.nan)
-        misfit = 100.0 * np.sqrt(np.nansum(residual**2, axis=1) / np.nansum(signal**2, axis=1))
-    data["lack_of_fit"] = over(misfit, name="Lack of fit", units="percent")
+    data["lack_of_fit"] = over(_lack_of_fit(residual, measured, used), name="Lack of fit", units="percent")
     data["path_factor"] = over(paths.factor, name="Path in units of the pure spectra's path, over the dilution")
     data["degrees_of_freedom"] = over(answer.trust, name="Degrees of freedom of the noise")
     data["contribution"] = over(answer.contribution, "component", "source", units=paths.amount_unit,
@@ -302,6 +299,13 @@ def _dataset(
     })  # fmt: skip
     return built.assign_attrs(title="Composition from known pure spectra", caution=CAUTION,
                               reproducibility=REPRODUCIBILITY)  # fmt: skip
+
+
+def _lack_of_fit(residual: FloatArray, measured: FloatArray, used: BoolArray) -> FloatArray:
+    with np.errstate(invalid="ignore", divide="ignore"):
+        signal = np.where(used, measured, np.nan)
+        lack: FloatArray = 100.0 * np.sqrt(np.nansum(residual**2, axis=1) / np.nansum(signal**2, axis=1))
+    return lack
 
 
 def _axis_variables(answer: Answer, over: Any, unit: str) -> dict[str, Any]:
