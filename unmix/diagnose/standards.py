@@ -53,14 +53,17 @@ def _fit(error: FloatArray, amount: FloatArray) -> tuple[float, float]:
     return float(size * np.exp(best.x[0])), float(size * np.exp(best.x[1]) / top)
 
 
-def outlying(errors: FloatArray, model: ErrorModel, amounts: FloatArray) -> BoolArray:
+def outlying(errors: FloatArray, model: ErrorModel, amounts: FloatArray, *, among: int) -> BoolArray:
     """Standards whose error when left out is beyond what the others allow, with Bonferroni's correction.
 
     Parameters
     ----------
     errors : ndarray, shape (standards, components)
     model : ErrorModel
+        From errors in which these standards had no part.
     amounts : ndarray, shape (standards, components)
+    among : int
+        How many errors the worst was taken from.
 
     Returns
     -------
@@ -68,7 +71,7 @@ def outlying(errors: FloatArray, model: ErrorModel, amounts: FloatArray) -> Bool
     """
     size = model.at(amounts)
     z = np.divide(np.abs(errors), size, out=np.zeros_like(errors), where=size > 0)
-    limit = stats.t.ppf(1.0 - _OUTLYING / (2.0 * errors.size), np.maximum(model.freedom, 3.0))
+    limit = stats.t.ppf(1.0 - _OUTLYING / (2.0 * among), np.maximum(model.freedom, 3.0))
     return np.asarray((z > limit).any(axis=1))
 
 

@@ -8,9 +8,9 @@ import xarray as xr
 
 from unmix.diagnose.standards import bent, error_model, outlying, upper_limit
 from unmix.errors import InputError, listed
-from unmix.kernels import FloatArray
+from unmix.kernels import BoolArray, FloatArray
 from unmix.kernels.noise import local_noise
-from unmix.kernels.variation import choose_floor, in_own_space, learn, leave_out, like_groups
+from unmix.kernels.variation import choose_floor, in_own_space, learn, leave_out, like_groups, predict
 from unmix.prepare.axis import select_regions
 from unmix.provenance import provenance
 from unmix.solve.learnt import LearntModel
@@ -101,7 +101,7 @@ def learn_pure(
     learnt = learn(values, c, floor)
     solver = LearntModel(learnt.pure, learnt.modes, floor, model, np.inf, 1.0, 0.95)
     scores, sizes = _left_out_fit(values, c, floor, solver)
-    out = outlying(alone - c, model, c)
+    out = _outlying(short, c, floor, alone)
     p = bent(alone - c, c)
     verdict, reason = _judge(labels_of(samples), out, p, names)
     spread = np.sqrt(np.sum((values - c @ learnt.pure) ** 2, axis=0) / (c.shape[0] - c.shape[1]))
@@ -138,6 +138,27 @@ def learn_pure(
              **_path(samples),
              **provenance("learn_pure", {"unit": unit, "regions": regions}, spectra=given)}  # fmt: skip
     return xr.Dataset(data, coords=coords, attrs=attrs)
+
+
+def _outlying(a: FloatArray, c: FloatArray, floor: float, alone: FloatArray) -> BoolArray:
+    """Standards that do not agree with the others, each judged by errors that it had no part in, the worst first."""
+    found = np.zeros(c.shape[0], dtype=np.bool_)
+    errors = alone - c
+    while found.sum() < c.shape[0] // 5:
+        kept = np.flatnonzero(~found)
+        size = error_model([c[kept] + errors[kept]], c[kept]).at(c[kept])
+        z = np.divide(np.abs(errors[kept]), size, out=np.zeros_like(size), where=size > 0)
+        worst = int(kept[np.argmax(z.max(axis=1))])
+        rest = kept[kept != worst]
+        if np.linalg.matrix_rank(c[rest]) < c.shape[1] or rest.size < c.shape[1] + 3:
+            break
+        without = leave_out(a[rest], c[rest], floor, [np.array([i]) for i in range(rest.size)])
+        one = predict(learn(a[rest], c[rest], floor), a[[worst]]) - c[[worst]]
+        if not outlying(one, error_model([without], c[rest]), c[[worst]], among=errors.size).any():
+            break
+        found[worst] = True
+        errors[rest] = without - c[rest]
+    return found
 
 
 def _check(values: FloatArray, c: FloatArray, samples: xr.DataArray, names: list[str]) -> None:
