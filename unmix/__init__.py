@@ -16,6 +16,7 @@ if TYPE_CHECKING:
     from unmix.solve.addition import standard_addition
     from unmix.solve.calibration import calibrate
     from unmix.solve.design import conditioning
+    from unmix.solve.interpretation import interpret, select_samples
     from unmix.solve.joint import joint_region
     from unmix.solve.known import quantify
     from unmix.solve.prediction import predict
@@ -30,6 +31,8 @@ _HOMES = {
     "learn_pure": "unmix.solve.standards",
     "joint_region": "unmix.solve.joint",
     "standard_addition": "unmix.solve.addition",
+    "interpret": "unmix.solve.interpretation",
+    "select_samples": "unmix.solve.interpretation",
     "calibrate": "unmix.solve.calibration",
     "predict": "unmix.solve.prediction",
     "save": "unmix.archive",
@@ -45,6 +48,7 @@ except PackageNotFoundError:  # a source tree that was never installed
 __all__ = [
     "calibrate",
     "conditioning",
+    "interpret",
     "joint_region",
     "learn_pure",
     "load",
@@ -53,6 +57,7 @@ __all__ = [
     "read",
     "report",
     "save",
+    "select_samples",
     "standard_addition",
     "write",
 ]
