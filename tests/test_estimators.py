@@ -15,6 +15,7 @@ from unmix.prepare import STEPS
 from unmix.prepare.accept import spectrum
 from unmix.prepare.interference import VapourRemoval
 from unmix.prepare.step import Step
+from unmix.prepare.transfer import Standardisation
 
 
 def every_estimator():
@@ -51,6 +52,24 @@ class VapourOnAnyAxis(VapourRemoval):
         self.vapour = None
 
 
+class StandardisationOfAnyAxis(Standardisation):
+    """The checks change the number of channels, so this one makes a map of its own: every channel as it is."""
+
+    accepts: ClassVar = {name: rule.or_none("every channel") for name, rule in Standardisation.accepts.items()}
+
+    def __init__(self, first=None, weights=None, offset=None, axis=None):
+        super().__init__(first, weights, offset, axis)
+
+    def _learn(self, rows, y):
+        every = np.arange(float(rows.shape[1]))
+        self.first, self.weights, self.offset, self.axis = every, np.ones((every.size, 1)), 0 * every, every
+        super()._learn(rows, y)
+        self.first = self.weights = self.offset = self.axis = None
+
+
+#: steps that need numbers which fit the axis, and what stands in for them
+ON_ANY_AXIS = {VapourRemoval: VapourOnAnyAxis, Standardisation: StandardisationOfAnyAxis}
+
 #: the spectra of the checks have one to four channels; these parameters suit them
 SMALL = {
     "AdaptiveReweighted": {"difference": 1},
@@ -83,10 +102,8 @@ EXCEPTIONS = {
 
 
 def instances():
-    return [
-        VapourOnAnyAxis() if kind is VapourRemoval else kind(**SMALL.get(kind.__name__, {}))
-        for kind in every_estimator()
-    ]
+    return [ON_ANY_AXIS[kind]() if kind in ON_ANY_AXIS else kind(**SMALL.get(kind.__name__, {}))
+            for kind in every_estimator()]  # fmt: skip
 
 
 # the spectra of the checks are no shifted copies of one another

@@ -10,8 +10,8 @@ import pytest
 import unmix
 
 NAMES = [
-    "calibrate", "conditioning", "interpret", "joint_region", "learn_pure", "load", "predict", "quantify", "read", "report", "save",
-    "select_samples", "standard_addition", "write",
+    "calibrate", "conditioning", "interpret", "joint_region", "learn_pure", "load", "predict", "quantify", "read",
+    "report", "save", "select_samples", "standard_addition", "transfer", "write",
 ]  # fmt: skip
 
 

@@ -21,6 +21,7 @@ if TYPE_CHECKING:
     from unmix.solve.known import quantify
     from unmix.solve.prediction import predict
     from unmix.solve.standards import learn_pure
+    from unmix.solve.transfer import transfer
 
 #: public name -> the module that holds it
 _HOMES = {
@@ -33,6 +34,7 @@ _HOMES = {
     "standard_addition": "unmix.solve.addition",
     "interpret": "unmix.solve.interpretation",
     "select_samples": "unmix.solve.interpretation",
+    "transfer": "unmix.solve.transfer",
     "calibrate": "unmix.solve.calibration",
     "predict": "unmix.solve.prediction",
     "save": "unmix.archive",
@@ -59,6 +61,7 @@ __all__ = [
     "save",
     "select_samples",
     "standard_addition",
+    "transfer",
     "write",
 ]
 

@@ -54,6 +54,8 @@ EXAMPLES = [
     p.SpikeRemoval(),
     p.SpikeRemoval(fill="interpolate"),
     p.StandardNormalVariate(),
+    p.Standardisation(np.arange(20, 140), np.tile([0.25, 0.5, 0.25], (120, 1)), np.linspace(0, 0.1, 120),
+                      np.arange(20.5, 140)),
     p.VapourRemoval(VAPOUR, regions=[(10.0, 125.0)]),
     p.WhittakerSmoother(),
     p.WhittakerSmoother(penalty=30.0, difference=3),

@@ -19,7 +19,7 @@ from unmix.prepare.additivity import require_additive
 pytestmark = pytest.mark.filterwarnings("ignore:Align")
 
 #: steps after which a channel no longer stands where it stood
-MOVES = {"Align", "GapDerivative", "Regions", "Resample"}
+MOVES = {"Align", "GapDerivative", "Regions", "Resample", "Standardisation"}
 
 
 def test_every_step_has_an_example(examples):

@@ -59,6 +59,7 @@ STEPS = {
     "SavitzkyGolay": "smooth",
     "SpikeRemoval": "channels",
     "StandardNormalVariate": "scatter",
+    "Standardisation": "transfer",
     "VapourRemoval": "interference",
     "WhittakerSmoother": "smooth",
 }
@@ -96,6 +97,7 @@ __all__ = [
     "SavitzkyGolay",
     "SpikeRemoval",
     "StandardNormalVariate",
+    "Standardisation",
     "VapourRemoval",
     "WhittakerSmoother",
     "common_axis",

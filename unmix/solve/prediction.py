@@ -18,6 +18,7 @@ from unmix.solve.calibration import Calibration
 from unmix.solve.latent_model import Guarded
 from unmix.solve.options import check_level
 from unmix.solve.result import CAUTION
+from unmix.solve.transfer import reach_of_transfer
 from unmix.spectra import rows_of, spectral_dim
 from unmix.units import SPECTRAL_UNITS
 
@@ -95,7 +96,7 @@ def predict(calibration: Calibration, spectra: Any, *, level: float = 0.95) -> x
     _refuse_taken(given)
     rows = rows_of(prepared)
     guarded = calibration.model.guard(rows, _columns(calibration))
-    lower, upper = _intervals(calibration, guarded.projected, level)
+    lower, upper = _intervals(calibration, guarded, level)
     judged = _judge(calibration, prepared, rows, guarded, lower, level)
     leading, shape = given.dims[:-1], given.shape[:-1]
     data, names = calibration.data, calibration.properties
@@ -160,9 +161,9 @@ def _columns(calibration: Calibration) -> FloatArray:
     return np.ascontiguousarray(np.moveaxis(slopes, 1, 0).reshape(slopes.shape[1], -1))
 
 
-def _intervals(calibration: Calibration, projected: FloatArray, level: float) -> tuple[FloatArray, FloatArray]:
+def _intervals(calibration: Calibration, guarded: Guarded, level: float) -> tuple[FloatArray, FloatArray]:
     """Both ends, from the centred rows times :func:`_columns`; NaN where a channel is missing."""
-    data = calibration.data
+    data, projected = calibration.data, guarded.projected
     part_of = data["part_of"].values
     held = part_of >= 0
     slopes = data["part_coefficient"].values
@@ -174,6 +175,10 @@ def _intervals(calibration: Calibration, projected: FloatArray, level: float) ->
     for j in range(at_mean.shape[1]):
         lower[:, j], upper[:, j] = jackknife_plus(values[:, :, j], errors[:, j], part_of[held], level)
     lower[missing], upper[missing] = np.nan, np.nan
+    more = reach_of_transfer(data, level)
+    if more is not None:
+        middle = guarded.predicted
+        lower, upper = middle - np.hypot(middle - lower, more), middle + np.hypot(upper - middle, more)
     return lower, upper
 
 
