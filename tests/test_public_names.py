@@ -10,7 +10,8 @@ import pytest
 import unmix
 
 NAMES = [
-    "calibrate", "conditioning", "interpret", "joint_region", "learn_pure", "load", "predict", "quantify", "read",
+    "adjust", "calibrate", "check_calibration", "compare_calibrations", "conditioning", "drift", "interpret",
+    "joint_region", "learn_pure", "load", "predict", "quantify", "read",
     "report", "save", "select_samples", "standard_addition", "transfer", "write",
 ]  # fmt: skip
 
@@ -29,7 +30,7 @@ def test_every_name_is_a_function_with_a_docstring(name):
 
 
 def test_a_wrong_name_is_refused_with_those_there_are():
-    with pytest.raises(AttributeError, match="has no attribute 'quantfy'; it has calibrate, conditioning"):
+    with pytest.raises(AttributeError, match="has no attribute 'quantfy'; it has adjust, calibrate"):
         unmix.quantfy  # noqa: B018 - the access is what is tested
 
 

@@ -22,6 +22,7 @@ if TYPE_CHECKING:
     from unmix.solve.prediction import predict
     from unmix.solve.standards import learn_pure
     from unmix.solve.transfer import transfer
+    from unmix.solve.upkeep import adjust, check_calibration, compare_calibrations, drift
 
 #: public name -> the module that holds it
 _HOMES = {
@@ -35,6 +36,10 @@ _HOMES = {
     "interpret": "unmix.solve.interpretation",
     "select_samples": "unmix.solve.interpretation",
     "transfer": "unmix.solve.transfer",
+    "adjust": "unmix.solve.upkeep",
+    "check_calibration": "unmix.solve.upkeep",
+    "compare_calibrations": "unmix.solve.upkeep",
+    "drift": "unmix.solve.upkeep",
     "calibrate": "unmix.solve.calibration",
     "predict": "unmix.solve.prediction",
     "save": "unmix.archive",
@@ -48,8 +53,12 @@ except PackageNotFoundError:  # a source tree that was never installed
     __version__ = "0+unknown"
 
 __all__ = [
+    "adjust",
     "calibrate",
+    "check_calibration",
+    "compare_calibrations",
     "conditioning",
+    "drift",
     "interpret",
     "joint_region",
     "learn_pure",
