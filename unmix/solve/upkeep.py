@@ -268,8 +268,8 @@ def drift(calibration: Calibration, spectra: Any, reference: Any = None, *, weig
 
     Notes
     -----
-    Q and T2 are standardised through the distribution of the left-out calibration samples (log-normal), errors by the
-    error of validation.
+    Q is standardised through the distribution of the left-out calibration samples (log-normal), T2 through its F
+    distribution, errors by the error of validation.
 
     References
     ----------
@@ -299,12 +299,14 @@ def drift(calibration: Calibration, spectra: Any, reference: Any = None, *, weig
                          accepted="give spectra along one dimension, in the order of time")  # fmt: skip
     dim = str(found["q_residual"].dims[0])
     data: dict[str, Any] = {}
-    for name, left in (("q_residual", "q_left_out"), ("t2", "t2_left_out")):
-        known = np.log(np.maximum(calibration.data[left].values, np.finfo(float).tiny))
-        with np.errstate(invalid="ignore", divide="ignore"):
-            z = (np.log(found[name].values) - np.nanmean(known)) / np.nanstd(known, ddof=1)
-        key = "q" if name == "q_residual" else "t2"
-        data |= _charted(key, z[:, None], (weight, known.size), (dim,), {"q": "Q", "t2": "Hotelling T2"}[key])
+    known = np.log(np.maximum(calibration.data["q_left_out"].values, np.finfo(float).tiny))
+    with np.errstate(invalid="ignore", divide="ignore"):
+        z = (np.log(found["q_residual"].values) - np.nanmean(known)) / np.nanstd(known, ddof=1)
+    n, k = known.size, calibration.n_components
+    data |= _charted("q", z[:, None], (weight, n), (dim,), "Q")
+    scaled = found["t2"].values * n * (n - k) / (k * (n**2 - 1.0))
+    z = stats.norm.isf(np.clip(stats.f.sf(scaled, k, n - k), 1e-15, 1.0 - 1e-15))
+    data |= _charted("t2", z[:, None], (weight, n), (dim,), "Hotelling T2")
     if reference is not None:
         _, values, names, _ = matched(spectra, reference)
         order = [names.index(name) for name in calibration.properties]
@@ -373,9 +375,9 @@ def _judge(
     for name, row, usual, share in zip(names, rows, expected, inside, strict=True):
         if row.advised != "none":
             grade = max(grade, 1)
-            said.append(f"{name} calls for a {row.advised} adjustment (bias {row.bias:.3g}{behind}, p = "
-                        f"{row.bias_p:.2g}; slope {row.slope:.3g}, p = {row.slope_p:.2g}), which takes the error from {row.error:.3g} to"
-                        f" {row.error_after:.3g}{behind}.")  # fmt: skip
+            tests = f"bias {row.bias:.3g}{behind}, p = {row.bias_p:.2g}; slope {row.slope:.3g}, p = {row.slope_p:.2g}"
+            said.append(f"{name} calls for a {row.advised} adjustment ({tests}), which takes the error from "
+                        f"{row.error:.3g} to {row.error_after:.3g}{behind}.")  # fmt: skip
         p = float(stats.f.sf((row.error / usual) ** 2, n, max(n, 20))) if usual > 0 else 1.0
         if p < 0.01:
             grade = max(grade, 2 if row.error > 3 * usual else 1)
