@@ -6,9 +6,12 @@ import shutil
 import subprocess
 
 import numpy as np
+import pandas as pd
 import pytest
 
+import unmix
 from unmix.report.page import report
+from unmix.spectra import make_spectra
 
 CHROMIUM = next(filter(None, map(shutil.which, ("chromium", "chromium-browser", "google-chrome"))), None)
 pytestmark = pytest.mark.skipif(CHROMIUM is None, reason="no Chromium on this machine")
@@ -137,3 +140,19 @@ def test_the_page_of_a_conditioning_draws_with_a_shared_script_beside_it(design,
     dom, console = opened(page, tmp_path / "profile")
     assert console == []
     assert dom.count('class="plot js-plotly-plot drawn"') == 1
+
+
+def test_pages_of_calibrations_and_predictions_draw(rng, tmp_path):
+    axis = np.arange(4000.0, 4600, 20)
+    pure = np.exp(-(((axis - np.array([[4150.0], [4400]])) / 60) ** 2))
+    c = rng.uniform(0.2, 2, (30, 2))
+    names = [f"run {i}" for i in range(30)]
+    spectra = make_spectra(c @ pure + 1e-3 * rng.normal(size=(30, axis.size)), axis, dim="wavenumber",
+                           quantity="absorbance", labels=names)  # fmt: skip
+    made = unmix.calibrate(spectra, pd.DataFrame({"water": c[:, 0]}, index=names), permutations=0, unit="g/L")
+    for name, result in (("calibration", made), ("prediction", unmix.predict(made, spectra))):
+        dom, console = opened(report(result, tmp_path / f"{name}.html"), tmp_path / f"profile {name}")
+        assert console == []
+        # figures are drawn when they come into sight
+        assert dom.count("data-figure=") >= 2
+        assert "js-plotly-plot" in dom

@@ -26,7 +26,7 @@ def measured(rng, n, gain=1.0, start=0, drift=None):
 
 @pytest.fixture
 def made(rng):
-    return unmix.calibrate(*measured(rng, 60), permutations=0, unit="g/L")
+    return unmix.calibrate(*measured(rng, 60), n_components=3, permutations=0, unit="g/L")
 
 
 def test_new_samples_that_agree(made, rng):

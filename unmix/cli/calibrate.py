@@ -64,6 +64,7 @@ def command(
     xlsx: options.Xlsx = None,
     json: options.Json = None,
     netcdf: options.NetCdf = None,
+    report: options.Report = None,
     overwrite: options.Overwrite = False,
     quiet: options.Quiet = False,
     debug: options.Debug = False,
@@ -75,7 +76,7 @@ def command(
     1 when it is doubtful or unsupported, 2 when something could not be used.
     """
     with errors_as_sentences(debug) as shown:
-        files = OutputFiles(csv, xlsx, json, netcdf, None, overwrite)
+        files = OutputFiles(csv, xlsx, json, netcdf, report, overwrite)
         files.check()
         check_targets([save], overwrite=overwrite)
         settings: dict[str, Any] = {"n_components": components, "max_components": max_components, "folds": folds,

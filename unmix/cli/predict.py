@@ -24,6 +24,7 @@ def command(
     xlsx: options.Xlsx = None,
     json: options.Json = None,
     netcdf: options.NetCdf = None,
+    report: options.Report = None,
     overwrite: options.Overwrite = False,
     quiet: options.Quiet = False,
     debug: options.Debug = False,
@@ -35,7 +36,7 @@ def command(
     when something could not be used.
     """
     with errors_as_sentences(debug) as shown:
-        files = OutputFiles(csv, xlsx, json, netcdf, None, overwrite)
+        files = OutputFiles(csv, xlsx, json, netcdf, report, overwrite)
         files.check()
         from unmix.cli.models import predict_files  # noqa: PLC0415 - heavy
         from unmix.cli.show import print_refused, remarks_of  # noqa: PLC0415 - heavy

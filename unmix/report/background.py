@@ -12,11 +12,12 @@ from unmix.report.view import Result, refused_of
 from unmix.report.words import HARDLY_APART, OVERLAPS, apartness, confused_pairs
 
 
-def _section(identity: str, title: str, *parts: Any) -> Markup:
+def section(identity: str, title: str, *parts: Any) -> Markup:
+    """A part of the page under a heading that links can lead to."""
     return element("section", element("h2", title, id=identity), parts, aria_labelledby=identity)
 
 
-def _table(caption: str, titles: Sequence[str], kinds: str, rows: Sequence[Sequence[Any]]) -> Markup:
+def table(caption: str, titles: Sequence[str], kinds: str, rows: Sequence[Sequence[Any]]) -> Markup:
     """A table whose first column names its rows; ``kinds`` has a letter a column, n for numbers, t for texts."""
     classes = ["number" if kind == "n" else "" for kind in kinds]
     head = [
@@ -30,10 +31,10 @@ def _table(caption: str, titles: Sequence[str], kinds: str, rows: Sequence[Seque
         )
         for row in rows
     ]
-    table = element(
+    made = element(
         "table", element("caption", caption), element("thead", element("tr", head)), element("tbody", body)
     )
-    return element("div", table, class_="scroll")
+    return element("div", made, class_="scroll")
 
 
 def conditioning(views: Sequence[Result]) -> Markup | None:
@@ -50,7 +51,7 @@ def conditioning(views: Sequence[Result]) -> Markup | None:
         f"amount; from {OVERLAPS:.0f} on a component is said to overlap, from {HARDLY_APART:.0f} on to be hardly "
         "told apart. The own signal is the share of a spectrum that nothing else in the fit can imitate."
     )
-    return _section("conditioning", "Can the components be told apart?", parts,
+    return section("conditioning", "Can the components be told apart?", parts,
                     element("p", explained, class_="small"))  # fmt: skip
 
 
@@ -92,7 +93,7 @@ def _conditioning_of(view: Result, *, several: bool) -> list[Markup]:
         parts.append(element("p", f"Largest condition index {significant(largest)}."))
     return [
         *parts,
-        _table(
+        table(
             "Overlap of the pure spectra with each other and the baseline",
             titles,
             "ttnnt" + "n" * limited,
@@ -114,7 +115,7 @@ def measurable(view: Result) -> Markup | None:
     reason = str(view.data["reason"].item()) if "reason" in view.data else ""
     told = sentence(reason) if reason else None
     said = element("p", badge(str(view.data["verdict"].item())), " ", told, class_="lead")
-    return _section("trust", "Can this mixture be measured at all?", said)
+    return section("trust", "Can this mixture be measured at all?", said)
 
 
 def advice(view: Result) -> Markup | None:
@@ -130,9 +131,9 @@ def advice(view: Result) -> Markup | None:
     rows = [[name_of(name), *(significant(column[j], 2) for column in columns)]
             for j, name in enumerate(view.components)]  # fmt: skip
     unit = view.unit("present_limit")
-    table = _table(f"Detection limits with each change alone, {unit}", titles, "t" + "n" * len(columns), rows)
+    made = table(f"Detection limits with each change alone, {unit}", titles, "t" + "n" * len(columns), rows)
     told = element("ul", [element("li", one) for one in said])
-    return _section("advice", "How to reach the wanted detection limits", told, table)
+    return section("advice", "How to reach the wanted detection limits", told, made)
 
 
 def alikeness(view: Result) -> list[Markup]:
@@ -147,8 +148,8 @@ def alikeness(view: Result) -> list[Markup]:
         ]
         text = "Angle between two pure spectra, degrees; 90 is fully apart, below 10 is nearly alike"
         parts.append(
-            _section(
-                "angles", "How alike are they?", _table(text, ["", *names], "t" + "n" * len(names), rows)
+            section(
+                "angles", "How alike are they?", table(text, ["", *names], "t" + "n" * len(names), rows)
             )
         )
     if "variance_proportion" in view.data and "condition_index" in view.data:
@@ -163,10 +164,10 @@ def alikeness(view: Result) -> list[Markup]:
             "components that cannot be told apart"
         )
         parts.append(
-            _section(
+            section(
                 "shares",
                 "Which directions are weak?",
-                _table(text, ["Condition index", *names], "n" * (len(names) + 1), weak),
+                table(text, ["Condition index", *names], "n" * (len(names) + 1), weak),
             )
         )
     return parts
@@ -183,8 +184,8 @@ def refusals(views: Sequence[Result]) -> Markup | None:
     if not found:
         return None
     rows = [[name_of(file), shown(reason)] for file, reason in found.items()]
-    table = _table(f"{len(found)} not answered", ["File", "Reason"], "tt", rows)
-    return _section("refused", "Files that could not be used", table)
+    made = table(f"{len(found)} not answered", ["File", "Reason"], "tt", rows)
+    return section("refused", "Files that could not be used", made)
 
 
 def remarks(views: Sequence[Result]) -> Markup | None:
@@ -199,7 +200,7 @@ def remarks(views: Sequence[Result]) -> Markup | None:
     )
     if known:
         parts += [element("h3", "Between repeated measurements"), *(element("p", text) for text in known)]
-    return _section("notes", "What the answer rests on", parts) if parts else None
+    return section("notes", "What the answer rests on", parts) if parts else None
 
 
 def caution(views: Sequence[Result]) -> Markup | None:
@@ -231,11 +232,11 @@ def provenance(views: Sequence[Result]) -> Markup:
     digests = _digests(views)
     if digests:
         rows = [[name_of(file), element("code", digest)] for file, digest in digests.items()]
-        listing = _table("SHA-256 of every file that went in", ["File", "Digest"], "tt", rows)
+        listing = table("SHA-256 of every file that went in", ["File", "Digest"], "tt", rows)
         parts.append(
             element("details", element("summary", f"Input files ({len(digests)})"), listing, class_="files")
         )
-    return _section("provenance", "How it came about", parts)
+    return section("provenance", "How it came about", parts)
 
 
 def _brief(value: Any) -> str:

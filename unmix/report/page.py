@@ -18,12 +18,16 @@ from plotly.offline import get_plotlyjs, get_plotlyjs_version
 
 from unmix.files import whole_file
 from unmix.report import background, curves, details, overview, plots
+from unmix.report.calibration_page import calibration_parts, prediction_parts
 from unmix.report.markup import element, escaped, script_json, shown
 from unmix.report.view import Composition, Result, results_of
 
+#: what makes the page of each kind that has no composition
+CALIBRATION_PARTS = {"calibration": calibration_parts, "prediction": prediction_parts}
+
 
 def report(
-    result: xr.Dataset | Sequence[xr.Dataset],
+    result: Any,
     path: str | os.PathLike[str],
     *,
     overwrite: bool = False,
@@ -34,8 +38,8 @@ def report(
     Parameters
     ----------
     result : Dataset or sequence of Dataset
-        From ``unmix.quantify`` or ``unmix.conditioning``; several of one kind (samples on different axes) share
-        the page.
+        From ``unmix.quantify``, ``unmix.conditioning`` or ``unmix.predict``, or a calibration; several of one kind
+        (samples on different axes) share the page.
     path : path
         The HTML file.
     overwrite : bool
@@ -68,7 +72,7 @@ def report(
     ...     unmix.report(unmix.quantify(spectra, pure), Path(folder) / "dyes.html").name
     'dyes.html'
     """
-    several = results_of(result)
+    several = results_of(getattr(result, "data", result) if hasattr(result, "preparation") else result)
     target = Path(path)
     script = _shared_script(Path(assets), target) if assets is not None else None
     text = page(several, script=script)
@@ -80,7 +84,9 @@ def report(
 def page(results: Sequence[xr.Dataset], *, script: str | None = None) -> str:
     """The text of the page; ``script`` is the address of the drawing library where it is not to stand inside."""
     kind = results[0].attrs["kind"]
-    if kind == "conditioning":
+    if kind in CALIBRATION_PARTS:
+        title, subtitle, main, data = CALIBRATION_PARTS[kind](results)
+    elif kind == "conditioning":
         designs = [Result(one) for one in results]
         title, subtitle, main, data = _design_parts(designs)
     else:

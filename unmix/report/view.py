@@ -28,7 +28,7 @@ _NEEDED = {
 }
 
 #: kinds that have a page and figures; tables are made of every kind
-PAGES = ("quantify", "conditioning")
+PAGES = ("quantify", "conditioning", "calibration", "prediction")
 
 #: a step of the axis that is so many times the usual one separates two regions
 JUMP = 5.0

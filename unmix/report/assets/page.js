@@ -9,6 +9,7 @@
   /* ---- curves out of their packing (the other side of curves.py) ---- */
   const bytes = text => Uint8Array.from(atob(text), char => char.charCodeAt(0)).buffer;
   const unpack = packed => {
+    if (Array.isArray(packed)) return packed; // times and names
     if (packed.f !== undefined) return Array.from(new Float32Array(bytes(packed.f)));
     return Array.from(new Uint16Array(bytes(packed.q)), code => code === 65535 ? NaN : packed.low + packed.step * code);
   };
