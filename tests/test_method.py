@@ -28,7 +28,9 @@ def same_steps(one, other):
 
 
 def test_every_step_comes_back_from_its_text(spectra):
-    given = {"VapourRemoval": {"vapour": (AXIS % 4).tolist()}}
+    given = {"VapourRemoval": {"vapour": (AXIS % 4).tolist()},
+             "Standardisation": {"first": [0, 1], "weights": [[0.5, 0.5], [0.25, 0.75]], "offset": [0.0, 0.5],
+                                 "axis": [1.0, 2.0]}}  # fmt: skip
     steps = [getattr(prepare, name)(**given.get(name, {})) for name in sorted(prepare.STEPS)]
     method = Method(
         steps, 'all "of" them, 5 µm\\\n', "quantify", {"baseline": 2, "level": 1e-05, "regions": [[1.0, 2]]}

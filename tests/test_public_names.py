@@ -10,7 +10,8 @@ import pytest
 import unmix
 
 NAMES = [
-    "adjust", "calibrate", "check_calibration", "compare_calibrations", "conditioning", "drift", "interpret",
+    "adjust", "calibrate", "check_calibration", "compare_calibrations", "conditioning", "drift", "identify",
+    "interpret",
     "joint_region", "learn_pure", "load", "predict", "quantify", "read",
     "report", "save", "select_samples", "standard_addition", "transfer", "write",
 ]  # fmt: skip

@@ -16,6 +16,7 @@ if TYPE_CHECKING:
     from unmix.solve.addition import standard_addition
     from unmix.solve.calibration import calibrate
     from unmix.solve.design import conditioning
+    from unmix.solve.identify import identify
     from unmix.solve.interpretation import interpret, select_samples
     from unmix.solve.joint import joint_region
     from unmix.solve.known import quantify
@@ -33,6 +34,7 @@ _HOMES = {
     "learn_pure": "unmix.solve.standards",
     "joint_region": "unmix.solve.joint",
     "standard_addition": "unmix.solve.addition",
+    "identify": "unmix.solve.identify",
     "interpret": "unmix.solve.interpretation",
     "select_samples": "unmix.solve.interpretation",
     "transfer": "unmix.solve.transfer",
@@ -59,6 +61,7 @@ __all__ = [
     "compare_calibrations",
     "conditioning",
     "drift",
+    "identify",
     "interpret",
     "joint_region",
     "learn_pure",

@@ -5,6 +5,7 @@ import json
 import platform
 from collections.abc import Mapping
 from datetime import UTC, datetime
+from functools import cache
 from importlib import metadata
 from pathlib import Path
 from typing import Any
@@ -15,6 +16,11 @@ _PACKAGES = ("unmix", "numpy", "scipy", "scikit-learn", "xarray", "pandas", "pym
 
 def versions() -> dict[str, str]:
     """Version of unmix and of every package that can change a number, and of Python."""
+    return dict(_versions())
+
+
+@cache
+def _versions() -> dict[str, str]:
     found = {"python": platform.python_version()}
     for package in _PACKAGES:
         try:

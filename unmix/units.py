@@ -24,7 +24,7 @@ AXIS_TITLES = {"wavenumber": "Wavenumber", "wavelength": "Wavelength", "raman_sh
 
 def plain(text: str) -> str:
     """Lower case, powers and micro signs as ASCII, one blank between words."""
-    table = str.maketrans({"µ": "u", "μ": "u", "⁻": "-", "¹": "1", "−": "-", "–": "-", "·": " ", "^": ""})
+    table = str.maketrans({"µ": "u", "μ": "u", "⁻": "-", "¹": "1", "\u2212": "-", "\u2013": "-", "·": " ", "^": ""})
     return re.sub(r"\s+", " ", text.translate(table).strip().lower())
 
 

@@ -142,7 +142,8 @@ def in_own_space(a: FloatArray) -> FloatArray:
     ndarray, shape (spectra, min(spectra, channels))
     """
     u, s, _ = np.linalg.svd(a, full_matrices=False)
-    return u * s
+    short: FloatArray = u * s
+    return short
 
 
 def choose_floor(

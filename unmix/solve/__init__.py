@@ -9,11 +9,13 @@ from typing import TYPE_CHECKING, Any
 if TYPE_CHECKING:
     from unmix.solve.estimator import KnownSpectra
     from unmix.solve.latent import PLSCalibration
+    from unmix.solve.library import LibrarySearch
 
 #: estimator -> the module that holds it
-_HOMES = {"KnownSpectra": "unmix.solve.estimator", "PLSCalibration": "unmix.solve.latent"}
+_HOMES = {"KnownSpectra": "unmix.solve.estimator", "LibrarySearch": "unmix.solve.library",
+          "PLSCalibration": "unmix.solve.latent"}  # fmt: skip
 
-__all__ = ["KnownSpectra", "PLSCalibration"]
+__all__ = ["KnownSpectra", "LibrarySearch", "PLSCalibration"]
 
 
 def __getattr__(name: str) -> Any:

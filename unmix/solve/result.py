@@ -119,7 +119,10 @@ def assemble(
         evidence.channels_saturated += missing if lost_light else 0
         evidence.channels_missing = 0 if lost_light else missing
         left, whole = (rows[i] - answer.fitted[i])[answer.used[i]], rows[i, answer.used[i]]
-        evidence.lack_of_fit = float(np.linalg.norm(left) / max(np.linalg.norm(whole), np.finfo(float).tiny))
+        # what noise alone leaves is not unexplained
+        noise = np.nan_to_num(answer.noise_level[i]) * np.sqrt(left.size)
+        unexplained = np.sqrt(max(float(left @ left) - noise**2, 0.0))
+        evidence.lack_of_fit = float(unexplained / max(np.linalg.norm(whole), np.finfo(float).tiny))
         evidence.blank = bool(answer.blank[i])
         above_baseline = (rows[i] - answer.baseline[i])[answer.used[i]]
         evidence.negative_share = float(np.mean(above_baseline < -0.05)) if above_baseline.size else 0.0

@@ -45,9 +45,9 @@ def transfer(
     Returns
     -------
     Calibration
-        Takes spectra of the new instrument. ``data["transfer_uncertainty"]`` is the standard uncertainty that the transfer
-        adds, found from samples left out of it; predictions hold it in their intervals. The limit of Q is widened to
-        what left-out samples reach.
+        Takes spectra of the new instrument. ``data["transfer_uncertainty"]`` is the standard uncertainty that the
+        transfer adds, found from samples left out of it; predictions hold it in their intervals. The limit of Q is
+        widened to what left-out samples reach.
 
     Raises
     ------
@@ -71,7 +71,8 @@ def transfer(
     >>> names = [f"s{i}" for i in range(30)]
     >>> def measured(gain):
     ...     values = gain * (amount @ bands) + 1e-4 * rng.normal(size=(30, 50))
-    ...     return make_spectra(values, 1000 + 10 * np.arange(50), dim="wavelength", quantity="absorbance", labels=names)
+    ...     return make_spectra(values, np.arange(1000, 1500, 10), dim="wavelength", quantity="absorbance",
+    ...                         labels=names)
     >>> first, second = measured(1.0), measured(0.9)
     >>> made = calibrate(first, pd.DataFrame({"water": amount[:, 0]}, index=names), permutations=0)
     >>> moved = transfer(made, second[:8], first[:8])
@@ -127,7 +128,8 @@ def _pairs(calibration: Calibration, spectra: Any, like: Any) -> tuple[FloatArra
     names, others = labels_of(given), labels_of(known)
     shared = [name for name in names if name in others]
     if len(shared) < _FEWEST:
-        raise InputError(f"{len(shared)} samples have a label in both sets ({listed(names[:3])} and {listed(others[:3])})",
+        few = f"{listed(names[:3])} and {listed(others[:3])}"
+        raise InputError(f"{len(shared)} samples have a label in both sets (of {few})",
                          accepted=f"give {_FEWEST} or more samples measured on both instruments")  # fmt: skip
     source = np.asarray(rows_of(given), dtype=np.float64)[[names.index(name) for name in shared]]
     target = np.asarray(rows_of(known), dtype=np.float64)[[others.index(name) for name in shared]]
@@ -150,7 +152,8 @@ def _left_out(source: FloatArray, target: FloatArray, axes: Any, window: int, co
     found = np.empty_like(target)
     for i in range(source.shape[0]):
         rest = np.arange(source.shape[0]) != i
-        found[i] = apply_piecewise(piecewise(source[rest], target[rest], axes[0], axes[1], window, components), source[[i]])[0]
+        made = piecewise(source[rest], target[rest], axes[0], axes[1], window, components)
+        found[i] = apply_piecewise(made, source[[i]])[0]
     return found
 
 
