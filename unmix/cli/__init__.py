@@ -20,6 +20,7 @@ COMMANDS = {
     "inspect": "Show what is in spectrum files, and what could not be read",
     "convert": "Write spectra as JCAMP-DX, CSV or netCDF",
     "quantify": "How much of each known component is in each sample, and how sure",
+    "identify": "Which few spectra of a library make up each sample",
     "conditioning": "What a set of pure spectra allows, before anything is measured",
     "calibrate": "From spectra with reference values to a proven calibration",
     "predict": "Values of new spectra from a calibration, each one guarded",

@@ -135,6 +135,44 @@ def quantify_files(
     return Run(results, order, refused)
 
 
+def identify_files(
+    sources: Sequence[str],
+    library: xr.DataArray,
+    settings: dict[str, Any],
+    *,
+    unit: str | None = None,
+    quantity: str | None = None,
+) -> tuple[list[xr.Dataset], dict[str, str]]:
+    """Read samples and search a library for each; files that cannot be used do not stop the others.
+
+    Raises
+    ------
+    UnmixError
+        When no sample could be answered.
+    """
+    source: Any = sources[0] if len(sources) == 1 else list(sources)
+    arrays, refused = read_each(source, unit=unit, quantity=quantity)
+    groups = [_joined(group) for group in _groups(_told_apart(arrays))]
+    results: list[xr.Dataset] = []
+    total, done = sum(math.prod(array.shape[:-1]) for array in groups), 0
+    with progress("identify") as tick:
+        for array in groups:
+            try:
+                results.append(unmix.identify(array, library, progress=_from(tick, done, total), **settings))
+            except UnmixError as error:
+                refused |= {label or file: str(error) for label, file in _names(array)}
+            done += math.prod(array.shape[:-1])
+    if not results:
+        raise InputError(_all_refused(refused))
+    if refused:
+        results[0] = results[0].assign_attrs(refused=json.dumps(refused))
+    return results, refused
+
+
+def _from(tick: Tick, done: int, total: int) -> Any:
+    return lambda n: tick(done + n, total)
+
+
 def quantify_work(pure: xr.DataArray | xr.Dataset, settings: dict[str, Any]) -> Any:
     """What is done with every block of a store."""
     _check(settings)

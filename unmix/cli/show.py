@@ -10,8 +10,10 @@ from unmix.cli.output import print_error
 from unmix.cli.terminal import Cell, Column, coloured, painted, print_table, shortened, wrapped
 from unmix.report.details import amounts_of
 from unmix.report.numbers import significant
+from unmix.report.tables import rows
 from unmix.report.view import Composition, Result
 from unmix.report.words import advice, apartness, lead
+from unmix.spectra import labels_of
 
 #: verdict -> style
 VERDICT_STYLES = {"supported": "good", "doubtful": "warn", "unsupported": "bad"}
@@ -123,6 +125,33 @@ def print_remarks(results: Sequence[xr.Dataset]) -> None:
     for text in dict.fromkeys(Result(one).text("caution") for one in results):
         if text:
             print(painted(wrapped(text), "faint", colour=coloured(sys.stdout)))
+
+
+def print_candidates(results: Sequence[xr.Dataset]) -> None:
+    """Candidate mixtures of all samples, the reasons below."""
+    columns = [Column("sample", cut=True), Column("evidence", right=True), Column("member", cut=True),
+               Column("amount", right=True), Column("lower", right=True), Column("upper", right=True),
+               Column("verdict")]  # fmt: skip
+    table: list[list[str | Cell]] = []
+    for one in results:
+        before = None
+        for row in rows(one):
+            new = (row["sample"], row["rank"]) != before
+            before = (row["sample"], row["rank"])
+            numbers = [significant(value, 3) if isinstance(value := row[key], float) else ""
+                       for key in ("concentration", "lower", "upper")]  # fmt: skip
+            head, verdict = new and row["rank"] == 1.0, str(row["verdict"])
+            table.append([str(row["sample"]) if head else "", f"{row['weight']:.1%}" if new else "",
+                          str(row["component"]) or "none", *numbers,
+                          Cell(verdict, VERDICT_STYLES.get(verdict, "")) if head else ""])  # fmt: skip
+    print_table(columns, table)
+    print()
+    for one in results:
+        told = zip(one["verdict"].values.ravel(), one["reason"].values.ravel(), strict=True)
+        for label, (verdict, reason) in zip(labels_of(one["measured"]), told, strict=True):
+            if str(verdict) != "supported":
+                print(wrapped(str(reason), first=f"{shortened(label, 30)} {verdict}: ", rest="  "))
+    print_remarks(results)
 
 
 def print_design(result: xr.Dataset) -> None:

@@ -40,7 +40,7 @@ def _plain(value: Any) -> Any:
 _DIGITS = {"error": 3, "bias": 2, "bias_p": 2, "slope": 3, "r2": 4, "rpd": 3, "lowest": 3, "highest": 3}
 
 
-class _Figures:
+class Figures:
     """Figures of a page, in the order of their places."""
 
     def __init__(self) -> None:
@@ -61,7 +61,7 @@ class _Figures:
 
 def calibration_parts(datasets: Sequence[xr.Dataset]) -> tuple[str, str, list[Any], dict[str, Any]]:
     """Title, subtitle, parts and data of the page of a calibration."""
-    figures = _Figures()
+    figures = Figures()
     main: list[Any] = []
     for data in datasets:
         verdict = str(data["verdict"].item())
@@ -118,10 +118,10 @@ def _outliers(data: xr.Dataset) -> Markup:
 
 def prediction_parts(datasets: Sequence[xr.Dataset]) -> tuple[str, str, list[Any], dict[str, Any]]:
     """Title, subtitle, parts and data of the page of predictions."""
-    figures = _Figures()
+    figures = Figures()
     main: list[Any] = []
     verdicts = [str(one) for data in datasets for one in data["verdict"].values.ravel()]
-    main.append(_trust(verdicts, datasets[0]))
+    main.append(trust_of(verdicts, _doubt(datasets[0])))
     for data in datasets:
         for j, name in enumerate(data["property"].values):
             label = f"{name} with its intervals; the calibrated range is shaded"
@@ -137,14 +137,19 @@ def prediction_parts(datasets: Sequence[xr.Dataset]) -> tuple[str, str, list[Any
         "figures": figures.packed}  # fmt: skip
 
 
-def _trust(verdicts: list[str], data: xr.Dataset) -> Markup:
+def trust_of(verdicts: Sequence[str], doubt: Markup | None = None) -> Markup:
+    """How many samples have each verdict."""
     counts = [(word, verdicts.count(word)) for word in VERDICTS if word in verdicts]
     tiles = [element("div", element("strong", str(number)), badge(word), element("span", USE[word], class_="use"),
                      class_=f"tile {word}") for word, number in counts]  # fmt: skip
-    own = str(data.attrs.get("calibration_verdict", ""))
-    doubt = element("p", f"The calibration itself is {own}: see its own page.", class_="warning") if own not in (
-        "", "supported") else None  # fmt: skip
     return background.section("trust", "Can this be trusted?", element("div", tiles, class_="tiles"), doubt)
+
+
+def _doubt(data: xr.Dataset) -> Markup | None:
+    own = str(data.attrs.get("calibration_verdict", ""))
+    if own in ("", "supported"):
+        return None
+    return element("p", f"The calibration itself is {own}: see its own page.", class_="warning")
 
 
 def _values(datasets: Sequence[xr.Dataset]) -> Markup:

@@ -19,11 +19,12 @@ from plotly.offline import get_plotlyjs, get_plotlyjs_version
 from unmix.files import whole_file
 from unmix.report import background, curves, details, overview, plots
 from unmix.report.calibration_page import calibration_parts, prediction_parts
+from unmix.report.candidates import candidate_parts
 from unmix.report.markup import element, escaped, script_json, shown
 from unmix.report.view import Composition, Result, results_of
 
 #: what makes the page of each kind that has no composition
-CALIBRATION_PARTS = {"calibration": calibration_parts, "prediction": prediction_parts}
+OTHER_PARTS = {"calibration": calibration_parts, "prediction": prediction_parts, "identify": candidate_parts}
 
 
 def report(
@@ -38,8 +39,8 @@ def report(
     Parameters
     ----------
     result : Dataset or sequence of Dataset
-        From ``unmix.quantify``, ``unmix.conditioning`` or ``unmix.predict``, or a calibration; several of one kind
-        (samples on different axes) share the page.
+        From ``unmix.quantify``, ``unmix.conditioning``, ``unmix.predict`` or ``unmix.identify``, or a calibration;
+        several of one kind (samples on different axes) share the page.
     path : path
         The HTML file.
     overwrite : bool
@@ -84,8 +85,8 @@ def report(
 def page(results: Sequence[xr.Dataset], *, script: str | None = None) -> str:
     """The text of the page; ``script`` is the address of the drawing library where it is not to stand inside."""
     kind = results[0].attrs["kind"]
-    if kind in CALIBRATION_PARTS:
-        title, subtitle, main, data = CALIBRATION_PARTS[kind](results)
+    if kind in OTHER_PARTS:
+        title, subtitle, main, data = OTHER_PARTS[kind](results)
     elif kind == "conditioning":
         designs = [Result(one) for one in results]
         title, subtitle, main, data = _design_parts(designs)

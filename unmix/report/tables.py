@@ -17,6 +17,7 @@ import xarray as xr
 from unmix.errors import WriteError
 from unmix.files import harmless_cell, whole_file
 from unmix.report.calibrations import FIGURE_COLUMNS, PREDICTION_COLUMNS, figure_rows, prediction_rows
+from unmix.report.candidates import CANDIDATE_COLUMNS, candidate_rows
 from unmix.report.view import Composition, Result, Row, Value, refused_of, results_of
 
 #: columns of the long table of amounts, in their order
@@ -31,9 +32,11 @@ DESIGN_COLUMNS = (
 )  # fmt: skip
 #: kind -> the columns of its table
 _COLUMNS = {"quantify": AMOUNT_COLUMNS, "conditioning": DESIGN_COLUMNS, "prediction": PREDICTION_COLUMNS,
-            "calibration": FIGURE_COLUMNS}  # fmt: skip
+            "calibration": FIGURE_COLUMNS, "identify": CANDIDATE_COLUMNS}  # fmt: skip
 #: kind -> what a sheet of it is called
-_SHEETS = {"quantify": "amounts", "conditioning": "conditioning", "prediction": "predictions", "calibration": "figures"}
+_SHEETS = {"quantify": "amounts", "conditioning": "conditioning", "prediction": "predictions", "calibration": "figures",
+           "identify": "candidates"}  # fmt: skip
+_ROWS = {"prediction": prediction_rows, "calibration": figure_rows, "identify": candidate_rows}
 _ENTRIES = ("settings", "versions", "inputs", "assumptions", "notes", "refused")
 
 
@@ -69,7 +72,7 @@ def rows(result: xr.Dataset | Sequence[xr.Dataset]) -> list[Row]:
         elif kind == "quantify":
             found += _amount_rows(one)
         else:
-            found += prediction_rows(one) if kind == "prediction" else figure_rows(one)
+            found += _ROWS[kind](one)
     return found
 
 

@@ -25,10 +25,11 @@ _NEEDED = {
     "conditioning": ("variance_inflation", "selectivity"),
     "prediction": ("predicted", "lower", "upper", "verdict", "reason"),
     "calibration": ("error", "verdict", "reason"),
+    "identify": ("components", "concentration", "weight", "measured", "fitted", "residual", "verdict", "reason"),
 }
 
 #: kinds that have a page and figures; tables are made of every kind
-PAGES = ("quantify", "conditioning", "calibration", "prediction")
+PAGES = ("quantify", "conditioning", "calibration", "prediction", "identify")
 
 #: a step of the axis that is so many times the usual one separates two regions
 JUMP = 5.0
