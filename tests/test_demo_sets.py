@@ -125,10 +125,10 @@ def in_a_copy(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> Path:
     return tmp_path / "copy"
 
 
-@pytest.mark.parametrize(("line", "status"), list(enumerate([1, 0, 0, 1])))
+@pytest.mark.parametrize(("line", "status"), list(enumerate([1, 0, 0, 0, 1])))
 def test_commands_of_the_readme(in_a_copy: Path, line: int, status: int, capsys: pytest.CaptureFixture[str]) -> None:
     commands = _blocks("")[0].splitlines()
-    assert len(commands) == 4
+    assert len(commands) == 5
     with pytest.raises(SystemExit) as ended:
         main(commands[line].split()[1:])
     assert ended.value.code == status
@@ -200,3 +200,16 @@ def test_bent_baseline_is_noticed(pure: xr.DataArray, truth: dict[str, dict[str,
     assert str(found.verdict.values[0]) != "supported"
     assert "not explained" in _text(found)
     assert _inside(truth, found).all()
+
+
+def test_the_library_finds_what_is_not_on_the_list(truth: dict[str, dict[str, str]]) -> None:
+    library = unmix.read(SET / "library")
+    assert library.sizes["sample"] >= 40
+    found = unmix.identify(unmix.read(SET / "drums" / "drum-05.jdx"), library)
+    names = [str(name) for name in found.components.values[0, 0] if name]
+    assert "dichloromethane" in names
+    assert set(names) == {"isopropanol", "acetone", "ethyl acetate", "toluene", "water", "dichloromethane"}
+    at = names.index("dichloromethane")
+    true = float(truth["drum-05"]["unlisted"])
+    assert found.concentration.values[0, 0, at] == pytest.approx(true, rel=0.02)
+    assert found.verdict.values[0] == "supported"

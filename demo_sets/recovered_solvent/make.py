@@ -1,4 +1,4 @@
-"""Make the demo set: pure spectra of five liquids and eight drums of recovered isopropanol, all invented.
+"""Make the demo set: pure spectra of five liquids, eight drums of recovered isopropanol and a library, all invented.
 
 ``python make.py`` writes the files beside this script, ``python make.py FOLDER`` elsewhere. The files are written
 here and not by unmix, in the forms of different instruments, so that reading them is a check of the reader.
@@ -148,6 +148,20 @@ BANDS = {
         Band(705, 14, 0.20, 0.6),  # range
     ),
 }
+
+
+#: kinds of invented compounds of the library: bands roughly where such groups absorb (the ranges named above), as
+#: position, spread of the position from compound to compound, width and height relative to the strongest
+KINDS = {
+    "alcohol": ((3330, 15, 240, 0.7), (2960, 8, 24, 0.5), (2875, 6, 24, 0.3), (1460, 6, 20, 0.25), (1055, 40, 30, 0.8)),
+    "alkane": ((2955, 3, 22, 0.7), (2924, 3, 24, 1.0), (2853, 3, 20, 0.6), (1465, 3, 16, 0.3), (1378, 3, 12, 0.2)),
+    "aromatic": ((3028, 8, 14, 0.35), (1604, 6, 10, 0.25), (1496, 8, 9, 0.5), (745, 30, 10, 1.0), (696, 6, 9, 0.7)),
+    "chlorinated": ((2990, 20, 16, 0.15), (1270, 20, 14, 0.5), (1215, 20, 14, 0.3), (745, 35, 18, 1.0)),
+    "ester": ((2975, 10, 24, 0.2), (1742, 5, 20, 0.9), (1372, 5, 14, 0.3), (1240, 12, 26, 1.0), (1050, 20, 20, 0.5)),
+    "ether": ((2960, 15, 26, 0.6), (2860, 15, 26, 0.6), (1450, 10, 18, 0.25), (1115, 20, 26, 1.0)),
+    "ketone": ((2970, 10, 24, 0.2), (1715, 6, 18, 1.0), (1410, 12, 16, 0.2), (1363, 5, 14, 0.5), (1210, 25, 18, 0.5)),
+}
+EACH_KIND = 6
 
 
 class Drum(NamedTuple):
@@ -312,6 +326,27 @@ def write_pure(folder: Path) -> None:
             write_jcamp(folder / f"{stem}.jdx", axis, values, labels, form)
 
 
+def write_library(path: Path) -> None:
+    """A library in one table every 2 cm-1: the six liquids, and compounds that do not exist."""
+    axis = np.arange(649.0, 4002.0, 2.0)
+    rng = np.random.default_rng([SEED, 1000])
+    columns = {name: absorptivity(name, axis) for name in DENSITY}
+    for kind, bands in KINDS.items():
+        for number in range(1, EACH_KIND + 1):
+            drawn = []
+            for at, spread, width, height in bands:
+                size = height * rng.lognormal(-0.4, 0.35)
+                drawn.append(Band(at + spread * rng.normal(), width * rng.lognormal(0, 0.15), size, 0.5))
+            drawn += [Band(rng.uniform(700, 1500), rng.lognormal(2.6, 0.3), 0.1 * rng.lognormal(0, 0.8), 0.5)
+                      for _ in range(rng.integers(4, 10))]  # fmt: skip
+            neat = np.sum([band_shape(axis, band) for band in drawn], axis=0)
+            columns[f"{kind} {number}"] = neat / (rng.uniform(750, 1300) * PATH_CM)
+    head = ",".join(["Wavenumber (cm-1)", *(f"{name} ((g/L)-1 cm-1)" for name in columns)])
+    table = np.array(list(columns.values())).T
+    lines = [",".join([f"{x:.0f}", *(f"{y:.3e}" for y in row)]) for x, row in zip(axis, table, strict=True)]
+    path.write_text("\n".join([head, *lines, ""]), encoding="ascii", newline="\n")
+
+
 def write_drums(folder: Path) -> None:
     """The eight drums every 2 cm-1, each with random numbers of its own so that one can change alone."""
     axis = np.arange(650.0, 4001.0, 2.0)
@@ -339,10 +374,11 @@ def write_truth(path: Path) -> None:
 
 def main(folder: Path) -> None:
     """Write the whole set into a folder."""
-    for name in ("pure", "drums"):
+    for name in ("pure", "drums", "library"):
         (folder / name).mkdir(parents=True, exist_ok=True)
     write_pure(folder / "pure")
     write_drums(folder / "drums")
+    write_library(folder / "library" / "library.csv")
     write_truth(folder / "truth.csv")
 
 

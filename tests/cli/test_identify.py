@@ -17,8 +17,8 @@ def shelf(tmp_path, monkeypatch, rng):
         for _ in range(6):
             rows[i] += rng.uniform(0.2, 1) / (1 + ((AXIS - rng.uniform(720, 1780)) / 9) ** 2)
     names = [f"compound {i}" for i in range(12)]
-    library = make_spectra(rows[:12], AXIS, dim="wavenumber", quantity="absorptivity", leading="component", labels=names,
-                           attrs={"per": "g/L"})  # fmt: skip
+    library = make_spectra(rows[:12], AXIS, dim="wavenumber", quantity="absorptivity", leading="component",
+                           labels=names, attrs={"per": "g/L"})  # fmt: skip
     values = np.array([0.6 * rows[2] + 0.3 * rows[9], 0.6 * rows[2] + 0.4 * rows[12]])
     samples = make_spectra(values + 1e-3 * rng.normal(size=values.shape), AXIS, dim="wavenumber", quantity="absorbance",
                            labels=["clean", "strange"])  # fmt: skip

@@ -6,7 +6,7 @@ import shlex
 import sys
 from importlib import resources
 from pathlib import Path
-from typing import Annotated
+from typing import Annotated, Any
 
 import typer
 
@@ -22,6 +22,8 @@ Example:
 
 #: what a set must hold: samples in the one folder that is not this one
 _PURE = "pure"
+#: further spectra, among which what is not explained may be
+_LIBRARY = "library"
 _TRUTH = "truth.csv"
 
 
@@ -97,7 +99,7 @@ def _samples_of(folder: Path) -> Path:
     others = [
         entry
         for entry in sorted(folder.iterdir())
-        if entry.is_dir() and entry.name not in (_PURE, "__pycache__")
+        if entry.is_dir() and entry.name not in (_PURE, _LIBRARY, "__pycache__")
     ]
     if len(others) != 1:
         raise InputError("the demo set must hold its samples in one folder", where=str(folder))
@@ -110,7 +112,10 @@ def _run(folder: Path, files: OutputFiles, shown: set[str], *, quiet: bool) -> N
     from unmix.cli.terminal import wrapped  # noqa: PLC0415 - kept beside its use
 
     samples, pure = _samples_of(folder), folder / _PURE
-    run = quantify_files([str(samples)], read_pure([str(pure)]), {"baseline": 1})
+    settings: dict[str, Any] = {"baseline": 1}
+    if (folder / _LIBRARY).is_dir():
+        settings["library"] = read_pure([str(folder / _LIBRARY)])
+    run = quantify_files([str(samples)], read_pure([str(pure)]), settings)
     title = f"Demo: {folder.name.replace('_', ' ')} (invented data)"
     results = [one.assign_attrs(title=title) for one in run.results]
     shown.update(remarks_of(results))

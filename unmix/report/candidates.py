@@ -121,9 +121,9 @@ def _table(data: xr.Dataset, sample: int) -> Markup:
         value, low, high = (one if isinstance(one := row[key], float) else math.nan
                             for key in ("concentration", "lower", "upper"))  # fmt: skip
         unit = f" {row['unit']}" if row["unit"] else ""
-        cells.append([f"{row['rank']:.0f}" if new else "", f"{row['weight']:.1%}" if new else "", name_of(str(row["component"]) or "\N{EN DASH}"),
-                      f"{significant(value, 3)}{unit}", f"{significant(low, 3)} to {significant(high, 3)}",
-                      str(row["distinction"]) if new else ""])  # fmt: skip
+        head = [f"{row['rank']:.0f}", f"{row['weight']:.1%}"] if new else ["", ""]
+        cells.append([*head, name_of(str(row["component"]) or "\N{EN DASH}"), f"{significant(value, 3)}{unit}",
+                      f"{significant(low, 3)} to {significant(high, 3)}", str(row["distinction"]) if new else ""])
     level = float(data.attrs["level"])
     titles = ["Rank", "Evidence", "Member", "Amount", f"{level:.0%} interval", "Set apart from the first"]
     return background.table("Candidate mixtures, the likeliest first", titles, "nntnnt", cells)
