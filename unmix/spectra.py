@@ -6,6 +6,7 @@ increasing finite axis, a known unit and a known quantity, and inner code trusts
 
 import re
 import warnings
+from collections import Counter
 from collections.abc import Mapping, Sequence
 from typing import Any
 
@@ -237,7 +238,7 @@ def as_pure(pure: Any, *, name: str = "pure") -> xr.DataArray:
         at = next(i for i, text in enumerate(names) if not text.strip())
         raise InputError(f"{name}: spectrum {at + 1} of {len(names)} has an empty component name",
                          accepted="give every pure spectrum a name of its own")  # fmt: skip
-    double = sorted({text for text in names if names.count(text) > 1})
+    double = sorted(text for text, uses in Counter(names).items() if uses > 1)
     if double:
         raise InputError(f"{name}: component name {listed(double)} appears more than once",
                          accepted="give every pure spectrum a name of its own")  # fmt: skip

@@ -57,6 +57,13 @@ def test_like_members_never_meet(rng):
     assert not any({2, 7} <= set(members) for members in found.members)
 
 
+def test_no_member_is_in_a_set_twice_however_small_the_noise(rng):
+    x = made(rng)
+    y = x[2] + 1e-8 * rng.normal(size=60)
+    found = search(Pursuit(x, y, np.ones(len(x), dtype=bool)), penalties(4, len(x), 60), 1e-18)
+    assert all(len(set(members)) == len(members) for members in found.members)
+
+
 def test_amounts_are_least_squares(rng):
     x = made(rng)
     y = rng.normal(size=60)

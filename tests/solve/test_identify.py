@@ -72,6 +72,15 @@ def test_near_twins_are_alternatives(library, rng):
     assert "in place of" in "".join(found.distinction.values[0])
 
 
+def test_twins_that_an_error_of_the_library_would_exchange_are_said(library, rng):
+    twin = (library.sel(component="compound 3") * (1 + 3e-3 * np.sin(AXIS / 30))).expand_dims("component")
+    both = xr.concat([library, twin.assign_coords(component=["other 3"])], "component").assign_attrs(library.attrs)
+    # so little noise that the data alone would decide
+    found = unmix.identify(sample(library, rng, {"compound 3": 0.5}, noise=1e-5), both, path_length=1)
+    assert found.verdict.values[0] == "doubtful"
+    assert "would be enough to exchange compound 3 and other 3" in found.reason.values[0]
+
+
 def test_what_is_known_helps(library, rng):
     spectrum = sample(library, rng, {"compound 3": 0.6, "compound 12": 0.2})
     found = unmix.identify(spectrum, library, include=["compound 7"], exclude=["compound 12"], path_length=1)
@@ -110,7 +119,7 @@ def test_twins_and_dead_members_are_told(library, rng):
     same = (2 * library.isel(component=[3])).assign_coords(component=["double 3"])
     more = xr.concat([library, dead, same], "component").assign_attrs(library.attrs)
     found = unmix.identify(sample(library, rng, {"compound 3": 0.6}), more, path_length=1)
-    assert "'double 3' has the same spectrum as 'compound 3'" in found.attrs["notes"]
+    assert "'double 3' has the same spectrum as 'compound 3', which stands for both" in found.attrs["notes"]
     assert "nothing" in found.attrs["notes"]
     assert first(found) == ["compound 3"]
 

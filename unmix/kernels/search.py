@@ -155,6 +155,8 @@ class Pursuit:
             along = self.cross - np.einsum("nk,nkm->nm", found, rows)
             apart = 1.0 - np.einsum("nkm,nkm->nm", rows, hidden)
         good = (along > 0) & (apart > self._same) & self.allowed
+        # rounding must not let a member join a set that it is in
+        np.put_along_axis(good, sets, False, axis=1)
         return np.where(good, along**2 / np.where(good, apart, 1.0), 0.0)
 
 

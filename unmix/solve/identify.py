@@ -25,6 +25,8 @@ _ALONE = 0.95
 _FAINT = 1e-3
 #: spectra whose cosine is above this are taken for the same
 _SAME = 1.0 - 1e-9
+#: along a random direction these are closer than this
+_CLOSE = 1e-3
 
 _GRADES = ("supported", "doubtful", "unsupported")
 
@@ -32,6 +34,7 @@ _GRADES = ("supported", "doubtful", "unsupported")
 class _Found(NamedTuple):
     sets: Sets
     answers: list[xr.Dataset]
+    twins: list[tuple[int, int]]
 
 
 def identify(
@@ -136,7 +139,9 @@ def identify(
         one = xr.DataArray(row[None], dims=("sample", spectral_dim(samples)),
                            coords={spectral_dim(samples): axis}, attrs=flat.attrs)  # fmt: skip
         length = float(paths.factor[i])
-        found.append(_Found(sets, [_answer(one, known, members, options, length) for members in sets.members]))
+        twins = [(i, twin) for i in sets.members[0] for twin in searched.near_twins(i, allowed)]
+        answers = [_answer(one, known, members, options, length) for members in sets.members]
+        found.append(_Found(sets, answers, twins))
         if progress:
             progress(i + 1)
     result = _dataset(samples, names, found, max_components, paths.amount_unit)
@@ -171,16 +176,37 @@ def _choices(
     reach = np.isfinite(rows).all(axis=1) & (np.abs(np.nan_to_num(rows)).max(axis=1) > 0)
     if not reach.all():
         told.append(f"members without signal in these channels were left out: {listed(np.array(names)[~reach])}")
-    unit = np.nan_to_num(rows) / np.maximum(np.linalg.norm(np.nan_to_num(rows), axis=1, keepdims=True), 1e-300)
-    for i in np.flatnonzero(reach):
-        twins = np.flatnonzero((unit[:i] @ unit[i] > _SAME) & reach[:i]) if i else np.empty(0, dtype=int)
-        if twins.size:
-            reach[i] = False
-            told.append(f"'{names[i]}' has the same spectrum as '{names[twins[0]]}' and stands for it too")
+    for i, twin in _same(np.nan_to_num(rows), reach):
+        reach[i] = False
+        told.append(f"'{names[i]}' has the same spectrum as '{names[twin]}', which stands for both")
     if not (allowed & reach).any():
         raise InputError("no member of the library may be chosen", accepted="exclude fewer, or widen the regions")
     required = tuple(sorted(names.index(str(name)) for name in include))
     return allowed & reach, required, told
+
+
+def _same(rows: FloatArray, reach: BoolArray) -> list[tuple[int, int]]:
+    """Later spectra that are the same as an earlier one up to a factor: neighbours along one random direction."""
+    places = np.flatnonzero(reach)
+    length = np.linalg.norm(rows[places], axis=1)
+    shade = rows[places] @ np.random.default_rng(0).standard_normal(rows.shape[1]) / length
+    order = np.argsort(shade, kind="stable")
+    found: list[tuple[int, int]] = []
+    start = 0
+    for end in range(1, order.size + 1):
+        if end < order.size and shade[order[end]] - shade[order[end - 1]] < _CLOSE:
+            continue
+        group = np.sort(order[start:end])
+        unit = rows[places[group]] / length[group, None]
+        kept: list[int] = []
+        for k in range(group.size):
+            twin = next((j for j in kept if float(unit[j] @ unit[k]) > _SAME), None)
+            if twin is None:
+                kept.append(k)
+            else:
+                found.append((int(places[group[k]]), int(places[group[twin]])))
+        start = end
+    return sorted(found)
 
 
 def _sets(
@@ -291,6 +317,11 @@ def _judge(one: _Found, names: list[str]) -> tuple[str, str]:
         others = [f"{_difference(names, one.sets.members[0], m)} ({w:.0%})" for m, w in
                   zip(one.sets.members, one.sets.weight, strict=True) if not top <= set(m)][:3]  # fmt: skip
         said.append(f"It may as well be the mixture {'; or '.join(others)}.")
+    if one.twins:
+        grade = max(grade, 1)
+        pairs = [f"{names[i]} and {names[j]}" for i, j in one.twins[:3]]
+        said.append("An error of a hundredth in a spectrum of the library would be enough to exchange "
+                    f"{'; '.join(pairs)}.")  # fmt: skip
     worst = str(first["verdict"].values[0])
     if not bands and worst != "supported":
         grade = max(grade, _GRADES.index(worst))

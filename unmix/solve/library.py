@@ -4,6 +4,7 @@ The sets are searched by ``kernels.search``; here the baseline is projected out,
 sets weighed. The labelled function stands in ``identify``.
 """
 
+from functools import cached_property
 from typing import Any, NamedTuple, Self
 
 import numpy as np
@@ -20,8 +21,12 @@ from unmix.solve.options import check_baseline
 
 #: spectra that the pursuit keeps of a big library at each step, and size from which it is screened first
 _KEPT, _BIG = 60, 400
+#: coordinates in which a big library is screened at most, and the share of its energy that they are to hold
+_COORDINATES, _ENERGY = 256, 0.9999
 #: rounds in which noise and sets are found in turn
 _ROUNDS = 3
+#: relative error of a spectrum that nobody can exclude, and which must not be enough to exchange two members
+_EXCHANGED = 0.01
 #: sum of squares, as a share of the whole, below which a residual is rounding
 _ROUNDING = 1e-20
 #: spectra with less than this share of their energy outside the baseline cannot be told from it
@@ -65,6 +70,26 @@ class Library:
         self.free = polynomial_terms(axis, baseline)
         self.reaches: BoolArray = np.asarray(np.isfinite(spectra).all(axis=1))
 
+    def near_twins(self, member: int, allowed: BoolArray) -> list[int]:
+        """Members that an error of a hundredth in a spectrum of the library would exchange for this one."""
+        x = self._reduced[0]
+        length = np.einsum("ij,ij->i", x, x)
+        cosine = (x @ x[member]) / np.sqrt(np.maximum(length * length[member], np.finfo(np.float32).tiny))
+        near = (1.0 - cosine**2 < _EXCHANGED**2) & (cosine > 0) & allowed & self.reaches
+        return [int(i) for i in np.flatnonzero(near) if i != member]
+
+    @cached_property
+    def _reduced(self) -> tuple[FloatArray, FloatArray]:
+        """The library in few coordinates that hold nearly all of its energy, and these as (channels, coordinates)."""
+        x = _coordinates(np.nan_to_num(self.spectra), np.zeros(self.spectra.shape[1]), self.free, np.float32)[0]
+        if x.shape[0] <= _BIG:
+            return x, np.eye(x.shape[1], dtype=np.float32)
+        size, axes = np.linalg.eigh(x.T @ x)
+        share = np.cumsum(size[::-1]) / max(float(size.sum()), np.finfo(float).tiny)
+        count = min(int(np.searchsorted(share, _ENERGY)) + 1, _COORDINATES)
+        kept: FloatArray = axes[:, ::-1][:, :count].astype(np.float32)
+        return x @ kept, kept
+
     def search(
         self, y: FloatArray, *, most: int, allowed: BoolArray, required: tuple[int, ...] = (), number: int = 10
     ) -> Sets:
@@ -88,14 +113,17 @@ class Library:
         """
         used = np.isfinite(y)
         basis = self.free[used]
-        places: IntArray = np.flatnonzero((allowed & self.reaches) | np.isin(np.arange(len(allowed)), required))
-        rows = self.spectra[places][:, used]
-        must = tuple(int(i) for i in np.searchsorted(places, sorted(required)))
+        may = (allowed & self.reaches) | np.isin(np.arange(len(allowed)), required)
+        places: IntArray = np.flatnonzero(may)
         if places.size > _BIG:
-            x, data, _ = _coordinates(rows, y[used], basis, np.float32)
-            kept = screened(x, data, np.ones(places.size, dtype=bool), most, _KEPT, must)
-            must = tuple(int(i) for i in np.searchsorted(kept, must))
-            places, rows = places[kept], rows[kept]
+            if used.all():
+                x, axes = self._reduced
+                data: FloatArray = _coordinates(np.empty((0, y.size)), y, self.free, np.float64)[1] @ axes
+            else:
+                x, data, _ = _coordinates(self.spectra[:, used], y[used], basis, np.float32)
+            places = screened(x, data, may, most, _KEPT, required)
+        rows = self.spectra[places][:, used].astype(np.float64)
+        must = tuple(int(i) for i in np.searchsorted(places, sorted(required)))
         found, noise = self._rounds(rows, y[used], basis, most, must, int(allowed.sum()))
         weight = np.exp(-0.5 * (found.criterion - found.criterion[0]))
         weight /= weight.sum()
